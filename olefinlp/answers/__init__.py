@@ -1,0 +1,1 @@
+"""The plan and what is computed around it: plain objects and tables."""

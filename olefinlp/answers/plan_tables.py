@@ -1,0 +1,432 @@
+"""The tables of a plan: feeds, furnaces, slate, recovery, stocks, prices, inputs, flat list."""
+
+from __future__ import annotations
+
+from olefinlp.answers.money import MoneyLine
+from olefinlp.answers.quantities import Quantities
+from olefinlp.answers.tables import Column, Record, Table
+
+MONTH = Column("month", "Month")
+
+
+def feeds_table(q: Quantities) -> Table:
+    """Every step of every source, bought or not; `worth` is the value of one more tonne at the gate."""
+    case, currency = q.case, q.case.currency
+    columns = (
+        MONTH,
+        Column("feed", "Feed"),
+        Column("source", "Source"),
+        Column("step", "Step", kind="count"),
+        Column("quality", "Quality"),
+        Column("bought", "Bought", "kt", "quantity"),
+        Column("minimum", "Minimum", "kt", "quantity"),
+        Column("maximum", "Maximum", "kt", "quantity"),
+        Column("shortfall", "Paid, not taken", "kt", "quantity"),
+        Column("price_written", "Price as written"),
+        Column("price", "Price", f"{currency}/t", "price"),
+        Column("worth", "Worth of one more tonne", f"{currency}/t", "price"),
+        Column("cost", "Cost", f"k{currency}", "money"),
+    )
+    rows: list[Record] = []
+    for month in case.months:
+        for source, data in case.sources.items():
+            limit = case.limits.get(("purchase", source, month))
+            for step in data.tiers:
+                item = case.purchase_item(source, step)
+                price = case.prices[item, month]
+                bought = q.value("bought", source, str(step), month)
+                size = case.tier_size[source, step, month]
+                high = limit.high if limit and len(data.tiers) == 1 else (size if size != float("inf") else None)
+                rows.append(
+                    {
+                        "month": month,
+                        "feed": data.feed,
+                        "source": data.name,
+                        "step": step,
+                        "quality": _quality(q, source, month),
+                        "bought": bought,
+                        "minimum": (limit.low if limit else None) if step == 1 else None,
+                        "maximum": high,
+                        "shortfall": q.value("shortfall", source, month) if data.take_or_pay and step == 1 else None,
+                        "price_written": price.text,
+                        "price": price.value,
+                        "worth": _worth_at_gate(q, source, step, month),
+                        "cost": bought * price.value,
+                    }
+                )
+    return Table("feeds", "Feeds bought", columns, rows)
+
+
+def _quality(q: Quantities, source: str, month: str) -> str:
+    quality = q.case.qualities.get(q.case.parcel_of.get((source, month), ""), {})
+    return ", ".join(f"{name} {value:g}" for name, value in quality.items())
+
+
+def _worth_at_gate(q: Quantities, source: str, step: int, month: str) -> float:
+    """Price plus what one more tonne forced in would earn, the source's own limits set aside."""
+    price = q.case.rate(q.case.purchase_item(source, step), month)
+    own = q.reduced_cost("bought", source, str(step), month)
+    limits = q.dual("purchase_limit", source, month) + q.dual("take_or_pay_limit", source, month)
+    return price + own + limits
+
+
+def furnaces_table(q: Quantities) -> Table:
+    """Modes in use: what is charged, and the furnaces it keeps busy."""
+    case = q.case
+    columns = (
+        MONTH,
+        Column("group", "Furnace group"),
+        Column("feed", "Feed"),
+        Column("quality", "Quality"),
+        Column("severity", "Severity"),
+        Column("charged", "Charged", "kt", "quantity"),
+        Column("hours", "Furnace-hours", "h", "hours"),
+        Column("furnaces", "Furnaces kept busy", "", "quantity"),
+        Column("decokes", "Decokes", "", "quantity"),
+    )
+    rows: list[Record] = []
+    for mode, parcel, month in case.charges:
+        charged = q.value("charge", mode, parcel, month)
+        if not charged:
+            continue
+        hours = charged * case.hours_per_kt[mode]
+        rows.append(
+            {
+                "month": month,
+                "group": case.mode_group[mode],
+                "feed": case.mode_feed[mode],
+                "quality": ", ".join(f"{name} {value:g}" for name, value in case.qualities[parcel].items()),
+                "severity": case.mode_severity[mode],
+                "charged": charged,
+                "hours": hours,
+                "furnaces": hours / case.hours(month),
+                "decokes": charged * case.decokes_per_kt[mode],
+            }
+        )
+    rows.sort(key=lambda row: case.months.index(row["month"]))
+    note = "Furnaces kept busy count decoking and may be fractions: a month is planned, not a calendar."
+    return Table("furnaces", "Furnaces", columns, rows, note)
+
+
+def groups_table(q: Quantities) -> Table:
+    """Hours of each group: there, used, spare."""
+    case = q.case
+    columns = (
+        MONTH,
+        Column("group", "Furnace group"),
+        Column("furnaces", "Furnaces", "", "count"),
+        Column("available", "Hours available", "h", "hours"),
+        Column("used", "Hours used", "h", "hours"),
+        Column("spare", "Hours spare", "h", "hours"),
+        Column("share", "Used", "%", "share"),
+        Column("reason", "Outage"),
+    )
+    rows: list[Record] = []
+    for month in case.months:
+        for group, data in case.scenario.plant.file.furnace_groups.items():
+            limit = case.limits.get(("furnace_hours", group, month))
+            used = sum(
+                case.hours_per_kt[mode] * q.value("charge", mode, parcel, month)
+                for mode, parcel, _ in case.charges_in[month]
+                if case.mode_group[mode] == group
+            )
+            available = limit.high if limit else None
+            rows.append(
+                {
+                    "month": month,
+                    "group": group,
+                    "furnaces": data.furnaces if isinstance(data.furnaces, int) else None,
+                    "available": available,
+                    "used": used,
+                    "spare": None if available is None else max(available - used, 0.0),
+                    "share": used / available if available else None,
+                    "reason": limit.reason if limit else "",
+                }
+            )
+    return Table("furnace_groups", "Furnace hours", columns, rows)
+
+
+def slate_table(q: Quantities) -> Table:
+    """Every outlet to sale; what is valued by content is shown at its average content value less deduction."""
+    case, currency = q.case, q.case.currency
+    columns = (
+        MONTH,
+        Column("outlet", "Outlet"),
+        Column("step", "Step", kind="count"),
+        Column("cuts", "From"),
+        Column("quantity", "Sold", kind="quantity"),
+        Column("unit", "Unit"),
+        Column("minimum", "Minimum", kind="quantity"),
+        Column("maximum", "Maximum", kind="quantity"),
+        Column("price_written", "Price as written"),
+        Column("price", "Price or content value less deduction", kind="price"),
+        Column("price_unit", "Price unit"),
+        Column("revenue", "Revenue", f"k{currency}", "money"),
+    )
+    rows: list[Record] = []
+    for month in case.months:
+        for outlet, steps in case.sale_tiers.items():
+            limit = case.limits.get(("outlet", outlet, month))
+            for step in steps:
+                price = case.prices[case.sale_item(outlet, step), month]
+                sold = q.value("sold", outlet, str(step), month)
+                value = content_per_tonne(q, outlet, month) - price.value if outlet in case.deductions else price.value
+                size = case.sale_size[outlet, step, month]
+                high = (limit.high if limit else None) if len(steps) == 1 else (size if size != float("inf") else None)
+                written = f"content less {price.text}" if outlet in case.deductions else price.text
+                rows.append(
+                    {
+                        "month": month,
+                        "outlet": outlet,
+                        "step": step,
+                        "cuts": " + ".join(case.outlets[outlet]),
+                        "quantity": sold,
+                        "unit": "TJ LHV" if case.outlets[outlet][0] in case.heat_cuts else "kt",
+                        "minimum": (limit.low if limit else None) if step == 1 else None,
+                        "maximum": high,
+                        "price_written": written,
+                        "price": value,
+                        "price_unit": price.unit_used,
+                        "revenue": sold * value,
+                    }
+                )
+    return Table("slate", "Products sold", columns, rows)
+
+
+def content_per_tonne(q: Quantities, outlet: str, month: str) -> float:
+    """Average value of what is in a tonne of a cut valued by content."""
+    cut = q.case.outlets[outlet][0]
+    made = q.value("cut_made", cut, month)
+    if not made:
+        return 0.0
+    items = [(item, parts) for (name, item), parts in q.case.content.items() if name == cut]
+    return sum(q.case.rate(f"contents.{cut}.{item}", month) * q.total(parts, month) for item, parts in items) / made
+
+
+def recovery_table(q: Quantities) -> Table:
+    """Load of each recovery unit, as an average rate over the month."""
+    case = q.case
+    columns = (
+        MONTH,
+        Column("unit", "Recovery unit"),
+        Column("load", "Load", kind="quantity"),
+        Column("minimum", "Minimum", kind="quantity"),
+        Column("maximum", "Maximum", kind="quantity"),
+        Column("rate_unit", "Unit"),
+        Column("share", "Loaded", "%", "share"),
+        Column("worth", "Worth of one more unit", kind="price"),
+        Column("worth_unit", "Worth unit"),
+        Column("reason", "Factor"),
+    )
+    rows: list[Record] = []
+    for month in case.months:
+        for unit in case.units:
+            limit = case.limits.get(("unit_load", unit, month))
+            if limit is None:
+                continue
+            load = q.value("unit_load", unit, month)
+            dual = q.dual("unit_load_limit", unit, month) * limit.worth_scale
+            rows.append(
+                {
+                    "month": month,
+                    "unit": unit,
+                    "load": load * limit.scale,
+                    "minimum": None if limit.low is None else limit.low * limit.scale,
+                    "maximum": None if limit.high is None else limit.high * limit.scale,
+                    "rate_unit": limit.unit,
+                    "share": load / limit.high if limit.high else None,
+                    "worth": abs(dual) if abs(dual) > 1e-9 else 0.0,
+                    "worth_unit": f"{case.currency}/{limit.worth_unit}",
+                    "reason": limit.reason,
+                }
+            )
+    return Table("recovery", "Recovery load", columns, rows, "Loads are averages over the month.")
+
+
+def stocks_table(q: Quantities) -> Table:
+    """Tanks: opening, closing, limits."""
+    case = q.case
+    columns = (
+        MONTH,
+        Column("item", "Tank"),
+        Column("opening", "Opening", "kt", "quantity"),
+        Column("closing", "Closing", "kt", "quantity"),
+        Column("minimum", "Minimum", "kt", "quantity"),
+        Column("maximum", "Maximum", "kt", "quantity"),
+    )
+    rows: list[Record] = []
+    for month in case.months:
+        for item, data in case.stocks.items():
+            limit = case.limits.get(("stock", item, month))
+            before = case.before(month)
+            lines = data.parcels if data.is_feed else (item,)
+            rows.append(
+                {
+                    "month": month,
+                    "item": item,
+                    "opening": q.stock(item, before) if before else sum(case.opening.get(line, 0.0) for line in lines),
+                    "closing": q.stock(item, month),
+                    "minimum": limit.low if limit else None,
+                    "maximum": limit.high if limit else None,
+                }
+            )
+    return Table("stocks", "Stocks", columns, rows)
+
+
+def prices_table(q: Quantities) -> Table:
+    """Prices: as written, how they become what is used, and where they stand."""
+    columns = (
+        MONTH,
+        Column("item", "Item"),
+        Column("written", "As written"),
+        Column("number", "Number", kind="price"),
+        Column("unit", "Unit written"),
+        Column("factor", "Factor to unit used", kind="number"),
+        Column("of", "Leans on"),
+        Column("times", "Times", kind="number"),
+        Column("plus", "Plus", kind="price"),
+        Column("value", "Price used", kind="price"),
+        Column("unit_used", "Unit used"),
+        Column("basis", "Basis"),
+        Column("source", "Source"),
+        Column("place", "Written in"),
+    )
+    rows: list[Record] = [
+        {
+            "month": p.month,
+            "item": p.item,
+            "written": p.text,
+            "number": None if p.of else p.number,
+            "unit": p.unit,
+            "factor": None if p.of else p.factor,
+            "of": p.of,
+            "times": p.times if p.of else None,
+            "plus": p.plus if p.of else None,
+            "value": p.value,
+            "unit_used": p.unit_used,
+            "basis": p.basis,
+            "source": p.source,
+            "place": str(p.place),
+        }
+        for p in sorted(q.case.prices.values(), key=lambda p: q.case.months.index(p.month))
+    ]
+    return Table("prices", "Prices", columns, rows)
+
+
+def reduced_costs_table(q: Quantities) -> Table:
+    """Decisions that stand at a bound of their own: change of margin per unit forced in."""
+    case = q.case
+    columns = (
+        MONTH,
+        Column("decision", "Decision"),
+        Column("item", "Item"),
+        Column("value", "Plan", kind="quantity"),
+        Column("unit", "Unit"),
+        Column("reduced_cost", "Reduced cost", kind="price"),
+        Column("reduced_cost_unit", "Reduced cost unit"),
+    )
+    names = {"bought": "bought", "charge": "charged", "disposition": "sent to outlet", "sold": "sold", "shortfall": "shortfall"}
+    names |= {"trade": "utility traded", "conversion": "conversion", "closing_stock": "closing stock"}
+    rows: list[Record] = []
+    for column, label in enumerate(q.lp.columns):
+        if label[0] not in names or abs(q.solution.reduced[column]) < 1e-9:
+            continue
+        unit, per = _units_of(q, label)
+        rows.append(
+            {
+                "month": label[-1],
+                "decision": names[label[0]],
+                "item": _item_of(label),
+                "value": q.value(*label),
+                "unit": unit,
+                "reduced_cost": q.reduced_cost(*label),
+                "reduced_cost_unit": f"{case.currency}/{per}",
+            }
+        )
+    return Table("reduced_costs", "Reduced costs", columns, rows)
+
+
+def _item_of(label: tuple[str, ...]) -> str:
+    if label[0] == "charge":
+        mode, parcel = label[1], label[2]
+        quality = parcel.partition(" (")[2]
+        return f"{mode} ({quality}" if quality else mode
+    return " ".join(label[1:-1])
+
+
+def _units_of(q: Quantities, label: tuple[str, ...]) -> tuple[str, str]:
+    """Unit of a decision in the plan, and the unit its reduced cost is per."""
+    plant = q.case.scenario.plant
+    kind = "mass"
+    if label[0] in ("disposition", "sold") and q.case.outlets[label[1]][0] in q.case.heat_cuts:
+        kind = "heat"
+    elif label[0] == "trade":
+        kind = plant.file.utilities[q.case.trades[label[1]][0]].measured_in
+    elif label[0] == "conversion":
+        first = next(iter(plant.file.conversions[label[1]].makes))
+        kind = plant.file.utilities[first].measured_in
+    return {"mass": ("kt", "t"), "heat": ("TJ LHV", "GJ LHV"), "power": ("GWh", "MWh")}[kind]
+
+
+def inputs_table(q: Quantities) -> Table:
+    """Every number of the files: as written, as used, and its place."""
+    columns = (
+        Column("item", "Item"),
+        MONTH,
+        Column("written", "As written"),
+        Column("value", "Value used", kind="number"),
+        Column("unit", "Unit used"),
+        Column("place", "Written in"),
+        Column("note", "Note"),
+    )
+    rows: list[Record] = []
+    seen: set[tuple[str, str]] = set()
+    for i in q.case.inputs:
+        if (i.item, i.month) not in seen:
+            seen.add((i.item, i.month))
+            rows.append(
+                {"item": i.item, "month": i.month, "written": i.written, "value": i.value, "unit": i.unit}
+                | {"place": str(i.place), "note": i.note}
+            )
+    return Table("inputs", "Inputs as used", columns, rows, "Prices have a table of their own.")
+
+
+def flat_table(q: Quantities, lines: list[MoneyLine]) -> Table:
+    """Quantities and money as one list: month, case, group, item, measure, value, unit."""
+    case = q.case
+    columns = (
+        MONTH,
+        Column("price_case", "Price case"),
+        Column("group", "Group"),
+        Column("item", "Item"),
+        Column("measure", "Measure"),
+        Column("value", "Value", kind="number"),
+        Column("unit", "Unit"),
+    )
+    price_case = case.scenario.file.price_case or ""
+    rows: list[Record] = []
+
+    def add(month: str, group: str, item: str, measure: str, value: float | None, unit: str) -> None:
+        if value is not None:
+            rows.append(
+                {"month": month, "price_case": price_case, "group": group, "item": item, "measure": measure}
+                | {"value": value, "unit": unit}
+            )
+
+    for mode in case.modes:
+        for month in case.months:
+            add(month, "charge", mode, "charged", q.charged(mode, month), "kt")
+    for month in case.months:
+        for component in case.components:
+            add(month, "component", component, "made", q.value("component_made", component, month), "kt")
+        for cut in case.cuts:
+            add(month, "cut", cut, "made", q.value("cut_made", cut, month), "kt")
+        for outlet, cuts in case.outlets.items():
+            unit = "TJ LHV" if cuts[0] in case.heat_cuts else "kt"
+            add(month, "outlet", outlet, "taken", q.outlet(outlet, month), unit)
+        for item in case.stocks:
+            add(month, "stock", item, "closing", q.stock(item, month), "kt")
+    for line in lines:
+        add(line.month, line.group, line.item, "quantity", line.quantity, line.quantity_unit)
+        add(line.month, line.group, line.item, "amount", line.amount, f"k{case.currency}")
+    return Table("list", "Flat list", columns, rows)

@@ -1,0 +1,1 @@
+"""Files → validated, frozen objects; every value with its file, line and unit; checks before solving."""

@@ -1,0 +1,358 @@
+"""Whether the numbers of a scenario can be a plan at all: takes, tanks, exits, limits that are missing.
+
+Names are checked in `scenario_references` before numbers are read, prices in `scenario_prices`.
+What clashes only through the whole plant is for the plan itself to find.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass
+
+from olefinlp.inputs.case import Case, Limit, Part
+from olefinlp.inputs.findings import Findings, Place
+from olefinlp.inputs.scenario_prices import check_prices, high_of
+from olefinlp.inputs.scenario_references import check_references
+
+__all__ = ["check_case", "check_references"]
+TINY = 1e-9
+
+
+def check_case(case: Case, findings: Findings) -> None:
+    """Everything that is implausible, or cannot work, now that the numbers are known."""
+    check_prices(case, findings)
+    for check in (
+        check_take_or_pay,
+        check_takes_have_modes,
+        check_takes_fit,
+        check_opening_stocks,
+        check_end_stocks,
+        check_cuts_leave,
+        check_unbounded,
+    ):
+        check(case, findings)
+
+
+def _path(*names: str) -> str:
+    return ".".join(names)
+
+
+# ---------------------------------------------------------------------------------- buying
+
+
+def check_take_or_pay(case: Case, findings: Findings) -> None:
+    """What is paid for can be had, and a shortfall pays between nothing and the whole price."""
+    for label, source in case.sources.items():
+        for month in case.months if source.take_or_pay else ():
+            limit, most = case.limits.get(("take_or_pay", label, month)), high_of(case, "purchase", label, month)
+            if limit and limit.low is not None and most is not None and limit.low > most + TINY:
+                message = f"take-or-pay of {limit.low:.6g} kt is more than can be bought, {most:.6g} kt"
+                findings.error(_low(limit), _path(source.kind, label, "take_or_pay"), message)
+            share = case.shortfall_pays[label, month]
+            if not 0 <= share <= 1:
+                path = (source.kind, source.feed, source.name, "shortfall_pays")
+                message = f"a shortfall pays {100 * share:.6g} % of the price, it must be from 0 to 100 %"
+                findings.error(case.scenario.document.place(path), _path(*path), message)
+
+
+def _low(limit: Limit) -> Place:
+    return limit.place_low or limit.place_high or Place("")
+
+
+def _takes(case: Case) -> Iterator[tuple[str, Limit]]:
+    """Every minimum purchase of a feed, with the feed."""
+    for label, source in case.sources.items():
+        for month in case.months if source.kind == "feeds" else ():
+            limit = case.limits.get(("purchase", label, month))
+            if limit and limit.low:
+                yield source.feed, limit
+
+
+def check_takes_have_modes(case: Case, findings: Findings) -> None:
+    """What must be bought must be able to go into a furnace."""
+    cracked = set(case.mode_feed.values())
+    for feed, limit in _takes(case):
+        if feed not in cracked:
+            message = f"{limit.low:.6g} kt of {feed} must be bought, but no mode cracks it"
+            findings.error(
+                _low(limit), _path("feeds", limit.key[0], "min"), message, "take the minimum away, or add a mode to the plant"
+            )
+
+
+# ---------------------------------------------------------------------------------- takes and furnace hours
+
+
+@dataclass(frozen=True)
+class _Span:
+    """Months in a row, by their first and last."""
+
+    months: tuple[str, ...]
+
+    @property
+    def words(self) -> str:
+        first, last = self.months[0], self.months[-1]
+        return first if first == last else f"{first} to {last}"
+
+
+def check_takes_fit(case: Case, findings: Findings) -> None:
+    """What must be bought, and what the tanks cannot keep, fits into the hours of the furnaces that can crack it.
+
+    Each feed counts with its least hours per kt, so what is refused here can never be a plan.
+    """
+    able = _able_groups(case)
+    reported: list[frozenset[str]] = []
+    for groups in _group_sets(case, able):
+        if any(groups >= smaller for smaller in reported):
+            continue
+        for span in _spans(case):
+            if _check_span(case, findings, span, groups, able):
+                reported.append(groups)
+                break
+
+
+def _able_groups(case: Case) -> dict[str, frozenset[str]]:
+    """Feeds that must be cracked, and the groups that can; left out where some group has no end of hours."""
+    must = {feed for feed, _ in _takes(case)} | {item for item, stock in case.stocks.items() if stock.is_feed}
+    found = {}
+    for feed in must:
+        groups = frozenset(case.mode_group[mode] for mode in case.modes if case.mode_feed[mode] == feed)
+        if groups and all(("furnace_hours", group, case.months[0]) in case.limits for group in groups):
+            found[feed] = groups
+    return found
+
+
+def _group_sets(case: Case, able: dict[str, frozenset[str]]) -> list[frozenset[str]]:
+    """Sets of groups worth asking, small ones first: those of one feed, of two, and of all."""
+    sets = set(able.values())
+    sets |= {one | other for one in able.values() for other in able.values()}
+    if able:
+        sets.add(frozenset().union(*able.values()))
+    return sorted(sets, key=lambda groups: (len(groups), sorted(groups)))
+
+
+def _spans(case: Case) -> list[_Span]:
+    """Each month alone, and all months up to each."""
+    months = case.months
+    return [_Span((month,)) for month in months] + [_Span(months[:end]) for end in range(2, len(months) + 1)]
+
+
+def _check_span(case: Case, findings: Findings, span: _Span, groups: frozenset[str], able: dict[str, frozenset[str]]) -> bool:
+    charged, places = dict[str, float](), list[Place]()
+    for feed, own in able.items():
+        if own <= groups:
+            amount, wrote = _must_charge(case, feed, span)
+            if amount > TINY:
+                charged[feed], places = amount, places + wrote
+    needed = sum(amount * _least_hours(case, feed) for feed, amount in charged.items())
+    there = sum(high_of(case, "furnace_hours", group, month) or 0.0 for group in groups for month in span.months)
+    if needed <= there * (1 + TINY) + TINY:
+        return False
+    amounts = ", ".join(f"{amount:.4g} kt of {feed}" for feed, amount in charged.items())
+    names = " and ".join(group for group in case.scenario.plant.file.furnace_groups if group in groups)
+    message = (
+        f"{amounts} must be cracked in {span.words}: this needs at least {needed:,.0f} h of {names}, there are {there:,.0f} h"
+    )
+    hours = [case.limits["furnace_hours", group, span.months[0]].place_high for group in sorted(groups)]
+    seen = dict.fromkeys(str(place) for place in [*places[1:], *hours] if place)
+    findings.error(places[0], "feeds", message, "see also " + ", ".join(seen))
+    return True
+
+
+def _must_charge(case: Case, feed: str, span: _Span) -> tuple[float, list[Place]]:
+    """The least that can be charged of a feed in a span (kt), and who wrote it."""
+    takes = [limit for own, limit in _takes(case) if own == feed and limit.month in span.months]
+    amount = sum(limit.low or 0.0 for limit in takes)
+    places = [_low(limit) for limit in takes]
+    if feed in case.stocks:
+        before = case.before(span.months[0])
+        tank = case.limits["stock", feed, span.months[-1]]
+        opening = sum(case.opening.get(parcel, 0.0) for parcel in case.stocks[feed].parcels)
+        kept = case.limits["stock", feed, before].low or 0.0 if before else opening
+        amount += kept - (tank.high if tank.high is not None else math.inf)
+        places.append(tank.place_high or _low(tank))
+    return amount, places
+
+
+def _least_hours(case: Case, feed: str) -> float:
+    return min(case.hours_per_kt[mode] for mode in case.modes if case.mode_feed[mode] == feed)
+
+
+# ---------------------------------------------------------------------------------- tanks
+
+
+def check_opening_stocks(case: Case, findings: Findings) -> None:
+    """A tank begins between its smallest and its largest stock."""
+    for item, stock in case.stocks.items():
+        opening = sum(case.opening.get(line, 0.0) for line in (stock.parcels if stock.is_feed else (item,)))
+        limit = case.limits.get(("stock", item, case.months[0]))
+        if limit is None:
+            continue
+        place, path = case.scenario.document.place(("stocks", item, "opening")), _path("stocks", item, "opening")
+        if limit.high is not None and opening > limit.high + TINY:
+            message = f"the tank opens with {opening:.6g} kt, above its largest stock of {limit.high:.6g} kt"
+            findings.warn(place, path, message, f"the rest must leave in {limit.month}")
+        elif limit.low is not None and opening < limit.low - TINY:
+            message = f"the tank opens with {opening:.6g} kt, below its smallest stock of {limit.low:.6g} kt"
+            findings.warn(place, path, message, f"the rest must come in {limit.month}")
+
+
+def check_end_stocks(case: Case, findings: Findings) -> None:
+    """What must be in a tank at the end fits into it."""
+    for item in case.stocks:
+        end, tank = case.limits.get(("end_stock", item)), case.limits.get(("stock", item, case.months[-1]))
+        if end and tank and end.low is not None and tank.high is not None and end.low > tank.high + TINY:
+            message = f"{end.low:.6g} kt must be there at the end, but the tank holds {tank.high:.6g} kt"
+            findings.error(_low(end), _path("stocks", item, "end"), message, f"its largest stock: {tank.place_high}")
+
+
+# ---------------------------------------------------------------------------------- ways out
+
+
+def _made_from(case: Case, month: str) -> Iterator[dict[str, float]]:
+    """What each charge that can occur, and each side stream on offer, is made of."""
+    for mode, parcel, _ in case.charges_in[month]:
+        yield case.yields[mode, parcel]
+    for label, source in case.sources.items():
+        if source.kind == "side_streams" and high_of(case, "purchase", label, month) != 0:
+            yield case.compositions[source.feed]
+
+
+def _cuts_made(case: Case, shares: dict[str, float]) -> set[str]:
+    return {cut for cut, row in case.recovery.items() if any(share > 0 and row.get(c, 0) > 0 for c, share in shares.items())}
+
+
+def _recycle_modes(case: Case, cut: str) -> list[str]:
+    """The modes that take a cut back into the furnaces."""
+    feeds = [feed for feed, own in case.scenario.plant.recycle_feeds().items() if own == cut]
+    return [mode for mode in case.modes if case.mode_feed[mode] in feeds]
+
+
+def check_cuts_leave(case: Case, findings: Findings) -> None:
+    """A cut that is made can leave: not all of its outlets are closed."""
+    closed: dict[str, list[str]] = {}
+    for month in case.months:
+        made = set().union(*(_cuts_made(case, shares) for shares in _made_from(case, month)))
+        for cut in case.cuts:
+            outlets = [outlet for outlet, cuts in case.outlets.items() if cut in cuts]
+            shut = bool(outlets) and all(high_of(case, "outlet", outlet, month) == 0 for outlet in outlets)
+            if cut in made and shut and cut not in case.stocks and not _recycle_modes(case, cut):
+                closed.setdefault(cut, []).append(month)
+    for cut, months in closed.items():
+        outlets = [outlet for outlet, cuts in case.outlets.items() if cut in cuts]
+        place = case.limits["outlet", outlets[0], months[0]].place_high or Place("")
+        message = f"every way out of {cut} is closed in {', '.join(months)} ({', '.join(outlets)}): what makes it cannot run"
+        findings.warn(place, _path("outlets", outlets[0], "max"), message)
+
+
+# ---------------------------------------------------------------------------------- limits that are missing
+
+
+def check_unbounded(case: Case, findings: Findings) -> None:
+    """A source without a maximum meets nothing that ends: no furnace hours, no capacity, no sale.
+
+    Only what is without an end all the way is refused; what is bounded by a clash of several
+    limits is left to the plan.
+    """
+    for month in case.months:
+        open_ways = _OpenWays(case, month)
+        for label, source in case.sources.items():
+            if high_of(case, "purchase", label, month) is not None or open_ways.capped("bought", label):
+                continue
+            found = open_ways.sale_of(label)
+            if found:
+                outlet_path = ("outlets", found, "max")
+                place = case.scenario.document.place((source.kind, source.feed, source.name, "max"))
+                other = case.scenario.document.place(outlet_path)
+                message = f"can be unbounded: nothing ends what is bought here and sold as {found} ({other})"
+                hint = "write a maximum for one of them, or hours or capacities that they use"
+                findings.error(place, _path(source.kind, label, "max"), message, hint)
+
+
+class _OpenWays:
+    """What can grow without end in one month, from the sources to the sales."""
+
+    def __init__(self, case: Case, month: str) -> None:
+        self.case = case
+        self.month = month
+        self.ends = set(self._ended(case.unit_parts, "unit_load")) | set(self._ended(case.sums, "named"))
+        self.ends |= set(self._utility_ends())
+        self.outlets = {name for name in case.outlets if self._outlet_open(name)}
+        self.modes = {mode for mode, _, _ in case.charges_in[month] if self._mode_open(mode)}
+        self.cuts = set(case.cuts)
+        while not self._settle():
+            pass
+
+    def capped(self, kind: str, *item: str) -> bool:
+        """Whether a quantity uses up something that ends."""
+        return (kind, item) in self.ends
+
+    def sale_of(self, label: str) -> str:
+        """An outlet to sale through which what is bought of a source leaves without end; empty if none."""
+        case, source = self.case, self.case.sources[label]
+        if source.kind == "feeds":
+            parcel = case.parcel_of[label, self.month]
+            ways = [case.yields[m, p] for m, p, _ in case.charges_in[self.month] if m in self.modes and p == parcel]
+        else:
+            composition = case.compositions[source.feed]
+            ways = [composition] if self._open(composition) else []
+        cuts = set().union(*(_cuts_made(case, shares) for shares in ways))
+        sales = (name for name in case.sale_tiers if name in self.outlets and cuts & set(case.outlets[name]))
+        return next(sales, "")
+
+    def _ended(self, sums: dict[str, tuple[Part, ...]], family: str) -> Iterator[tuple[str, tuple[str, ...]]]:
+        for name, parts in sums.items():
+            if high_of(self.case, family, name, self.month) is not None:
+                yield from self._positive(parts)
+
+    def _positive(self, parts: Iterable[Part], sign: float = 1.0) -> Iterator[tuple[str, tuple[str, ...]]]:
+        yield from ((part.kind, part.item) for part in parts if sign * part.coefficient > 0)
+
+    def _utility_ends(self) -> Iterator[tuple[str, tuple[str, ...]]]:
+        """What uses a utility that cannot be had without end, or makes one that cannot leave so."""
+        for name, parts in self.case.utilities.items():
+            if not self._trades_open(name, ("imports",)) and not self._conversion_open(name):
+                yield from self._positive(parts)
+            if not self._trades_open(name, ("exports", "emissions")):
+                made = self._positive(parts, -1.0)
+                yield from ((kind, item) for kind, item in made if kind not in ("outlet", "ingredient"))
+
+    def _trades_open(self, utility: str, kinds: tuple[str, ...]) -> bool:
+        trades = [trade for trade, (own, kind) in self.case.trades.items() if own == utility and kind in kinds]
+        return any(high_of(self.case, "trade", trade, self.month) is None for trade in trades)
+
+    def _conversion_open(self, utility: str) -> bool:
+        makers = [name for name, flows in self.case.conversions.items() if flows.get(utility, 0.0) < 0]
+        return any(high_of(self.case, "conversion", name, self.month) is None for name in makers)
+
+    def _outlet_open(self, outlet: str) -> bool:
+        case = self.case
+        limited = high_of(case, "outlet", outlet, self.month) is not None or self.capped("outlet", outlet)
+        blended = any(key[0] == outlet for key in case.specifications)
+        mixed = any(self.capped("ingredient", outlet, cut) for cut in case.outlets[outlet])
+        return not (limited or blended or mixed)
+
+    def _mode_open(self, mode: str) -> bool:
+        case, group = self.case, self.case.mode_group[mode]
+        hours = high_of(case, "furnace_hours", group, self.month)
+        crews = high_of(case, "decoke_crew_hours", self.month) if case.decoke_hours_per_kt[mode] else None
+        return hours is None and crews is None and not self.capped("charge", mode)
+
+    def _open(self, shares: dict[str, float]) -> bool:
+        """Whether all that a tonne becomes can leave without end."""
+        pieces = all(not self.capped("component", c) for c, share in shares.items() if share > 0)
+        return pieces and _cuts_made(self.case, shares) <= self.cuts
+
+    def _settle(self) -> bool:
+        """Drop cuts and modes that no longer lead anywhere without end; True when nothing changed."""
+        case = self.case
+        cuts = {cut for cut in self.cuts if not self.capped("cut", cut) and self._cut_open(cut)}
+        yields = {mode: case.yields[mode, parcel] for mode, parcel, _ in case.charges_in[self.month]}
+        modes = {mode for mode in self.modes if self._open(yields[mode])}
+        settled = (cuts, modes) == (self.cuts, self.modes)
+        self.cuts, self.modes = cuts, modes
+        return settled
+
+    def _cut_open(self, cut: str) -> bool:
+        outlets = any(outlet in self.outlets for outlet, cuts in self.case.outlets.items() if cut in cuts)
+        return outlets or any(mode in self.modes for mode in _recycle_modes(self.case, cut))

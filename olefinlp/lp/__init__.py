@@ -1,0 +1,1 @@
+"""Labelled numbers → algebra (Pyomo) → HiGHS → values, shadow prices, certificate."""

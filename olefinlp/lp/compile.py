@@ -1,0 +1,131 @@
+"""The Pyomo model as labelled arrays, compiled once.
+
+Everything after this file works on arrays: the solver, the certificate, exports, cases.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import pyomo.environ as pyo
+from numpy.typing import NDArray
+from pyomo.common.gc_manager import PauseGC
+from pyomo.core.base.enums import SortComponents
+from pyomo.core.expr.visitor import evaluate_expression
+from pyomo.repn.linear import LinearRepnVisitor
+from pyomo.repn.util import OrderedVarRecorder
+
+Floats = NDArray[np.float64]
+Integers = NDArray[np.int32]
+Label = tuple[str, ...]
+
+
+@dataclass(frozen=True)
+class LabelledLp:
+    """max cost·x + offset, row_low ≤ A x ≤ row_high, low ≤ x ≤ high.
+
+    A is stored by rows: `starts` (rows + 1), `index` and `value` (non-zeros). `rows` and `columns`
+    hold labels such as `("furnace_hours_limit", "gas_furnaces", "2031-03")`.
+    """
+
+    rows: tuple[Label, ...]
+    columns: tuple[Label, ...]
+    starts: Integers
+    index: Integers
+    value: Floats
+    row_low: Floats
+    row_high: Floats
+    low: Floats
+    high: Floats
+    cost: Floats
+    offset: float
+    row_at: dict[Label, int] = field(repr=False)
+    column_at: dict[Label, int] = field(repr=False)
+
+    def activity(self, x: Floats) -> Floats:
+        """A x, by row."""
+        return np.add.reduceat(np.append(self.value * x[self.index], 0.0), self.starts[:-1]) * (np.diff(self.starts) > 0)
+
+    def gathered(self, y: Floats) -> Floats:
+        """Aᵀ y, by column."""
+        weights = self.value * np.repeat(y, np.diff(self.starts))
+        return np.bincount(self.index, weights=weights, minlength=len(self.columns))
+
+    def sizes(self, x: Floats) -> Floats:
+        """Σ |a x| of each row: the size that its residual is compared with."""
+        work = np.append(np.abs(self.value * x[self.index]), 0.0)
+        return np.add.reduceat(work, self.starts[:-1]) * (np.diff(self.starts) > 0)
+
+
+def compile_model(model: pyo.ConcreteModel) -> LabelledLp:
+    """Labelled arrays of a linear model.
+
+    Raises `ValueError` if an expression is not linear, which no rule of the algebra is.
+    """
+    with PauseGC():
+        columns, variables = _columns(model)
+        at = {id(v): j for j, v in enumerate(variables)}
+        visitor = LinearRepnVisitor({}, var_recorder=OrderedVarRecorder({}, {}, SortComponents.unsorted))
+        rows, starts, index, value, low, high = [], [0], [], [], [], []
+        for container in model.component_objects(pyo.Constraint, active=True):
+            for key, constraint in container.items():
+                repn = _linear(visitor, constraint.body, constraint.name)
+                for number, coefficient in repn.linear.items():
+                    if coefficient:
+                        index.append(at[number])
+                        value.append(coefficient)
+                starts.append(len(index))
+                rows.append(_label(container.local_name, key))
+                low.append(_bound(constraint.lower, -np.inf) - repn.constant)
+                high.append(_bound(constraint.upper, np.inf) - repn.constant)
+        cost = np.zeros(len(columns))
+        repn = _linear(visitor, model.margin.expr, "margin")
+        for number, coefficient in repn.linear.items():
+            cost[at[number]] += coefficient
+        return LabelledLp(
+            rows=tuple(rows),
+            columns=tuple(columns),
+            starts=np.array(starts, dtype=np.int32),
+            index=np.array(index, dtype=np.int32),
+            value=np.array(value, dtype=float),
+            row_low=np.array(low, dtype=float),
+            row_high=np.array(high, dtype=float),
+            low=np.array([_bound(v.lower, -np.inf) for v in variables], dtype=float),
+            high=np.array([_bound(v.upper, np.inf) for v in variables], dtype=float),
+            cost=cost,
+            offset=float(repn.constant),
+            row_at={label: i for i, label in enumerate(rows)},
+            column_at={label: j for j, label in enumerate(columns)},
+        )
+
+
+def _columns(model: pyo.ConcreteModel) -> tuple[list[Label], list[Any]]:
+    labels: list[Label] = []
+    variables: list[Any] = []
+    for container in model.component_objects(pyo.Var, active=True):
+        for key, variable in container.items():
+            labels.append(_label(container.local_name, key))
+            variables.append(variable)
+    return labels, variables
+
+
+def _label(name: str, key: Any) -> Label:
+    if key is None:
+        return (name,)
+    return (name, *map(str, key)) if isinstance(key, tuple) else (name, str(key))
+
+
+def _linear(visitor: Any, expression: Any, name: str) -> Any:
+    repn = visitor.walk_expression(expression)
+    if repn.nonlinear is not None:
+        raise ValueError(f"{name} is not linear")
+    return repn
+
+
+def _bound(value: Any, missing: float) -> float:
+    return missing if value is None else float(evaluate_expression(value))
+
+
+__all__ = ["Floats", "Integers", "Label", "LabelledLp", "compile_model"]

@@ -1,0 +1,1 @@
+"""Workbook, charts, csv, json, printed summary."""
