@@ -24,6 +24,7 @@ def limits_table(q: Quantities) -> Table:
         Column("value", "Plan", kind="quantity"),
         Column("maximum", "Maximum", kind="quantity"),
         Column("unit", "Unit"),
+        Column("measure", "Measured as"),
         Column("state", "State"),
         Column("worth", "Worth of one more unit", kind="price"),
         Column("rate", "Rate d(margin)/d(limit)", kind="price"),
@@ -39,7 +40,7 @@ def limits_table(q: Quantities) -> Table:
 def limit_record(q: Quantities, limit: Limit) -> Record:
     """One limit as a record, in the units in which people read it."""
     label = (f"{limit.family}_limit", *limit.key)
-    value, dual = q.activity(label), q.dual(label)
+    value, dual = q.activity(label), q.dual(*label)
     state, side = _state(q, limit, value, dual)
     if abs(dual * limit.worth_scale) < 1e-9:
         dual = 0.0
@@ -52,6 +53,7 @@ def limit_record(q: Quantities, limit: Limit) -> Record:
         "value": None if value is None else value * limit.scale,
         "maximum": None if limit.high is None else limit.high * limit.scale,
         "unit": limit.unit,
+        "measure": limit.measure,
         "state": state,
         "worth": abs(dual) * limit.worth_scale,
         "rate": dual * limit.worth_scale,

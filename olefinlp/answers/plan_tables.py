@@ -17,10 +17,12 @@ def feeds_table(q: Quantities) -> Table:
         Column("feed", "Feed"),
         Column("source", "Source"),
         Column("step", "Step", kind="count"),
+        Column("steps", "of steps", kind="count"),
         Column("quality", "Quality"),
         Column("bought", "Bought", "kt", "quantity"),
         Column("minimum", "Minimum", "kt", "quantity"),
         Column("maximum", "Maximum", "kt", "quantity"),
+        Column("take_or_pay", "Take-or-pay", "kt", "quantity"),
         Column("shortfall", "Paid, not taken", "kt", "quantity"),
         Column("price_written", "Price as written"),
         Column("price", "Price", f"{currency}/t", "price"),
@@ -31,6 +33,7 @@ def feeds_table(q: Quantities) -> Table:
     for month in case.months:
         for source, data in case.sources.items():
             limit = case.limits.get(("purchase", source, month))
+            pay = case.limits.get(("take_or_pay", source, month))
             for step in data.tiers:
                 item = case.purchase_item(source, step)
                 price = case.prices[item, month]
@@ -43,10 +46,12 @@ def feeds_table(q: Quantities) -> Table:
                         "feed": data.feed,
                         "source": data.name,
                         "step": step,
+                        "steps": len(data.tiers),
                         "quality": _quality(q, source, month),
                         "bought": bought,
                         "minimum": (limit.low if limit else None) if step == 1 else None,
                         "maximum": high,
+                        "take_or_pay": pay.low if pay else None,
                         "shortfall": q.value("shortfall", source, month) if data.take_or_pay and step == 1 else None,
                         "price_written": price.text,
                         "price": price.value,
@@ -63,11 +68,25 @@ def _quality(q: Quantities, source: str, month: str) -> str:
 
 
 def _worth_at_gate(q: Quantities, source: str, step: int, month: str) -> float:
-    """Price plus what one more tonne forced in would earn, the source's own limits set aside."""
-    price = q.case.rate(q.case.purchase_item(source, step), month)
-    own = q.reduced_cost("bought", source, str(step), month)
-    limits = q.dual("purchase_limit", source, month) + q.dual("take_or_pay_limit", source, month)
-    return price + own + limits
+    """Value of one more tonne at the gate, whatever its source: the best use that there is for it.
+
+    The shadow price of the feed balance alone is not enough for a feed that is not charged: it may
+    stand anywhere between the value and the price, so the best use's own reduced cost is added.
+    """
+    case = q.case
+    if case.sources[source].kind == "side_streams":
+        price = case.rate(case.purchase_item(source, step), month)
+        limits = q.dual("purchase_limit", source, month) + q.dual("take_or_pay_limit", source, month)
+        return price + q.reduced_cost("bought", source, str(step), month) + limits
+    parcel = case.parcel_of[source, month]
+    uses = [q.reduced_cost("charge", mode, p, month) for mode, p, _ in case.charges_in[month] if p == parcel]
+    feed = case.sources[source].feed
+    if feed in case.stocks and case.stocks[feed].is_feed:
+        tank = q.dual("stock_limit", feed, month)
+        tank += q.dual("end_stock_limit", feed) if month == case.months[-1] else 0.0
+        if tank <= 0:  # room in the tank: storing is a use too, at its value without the tank's minimum
+            uses.append(q.reduced_cost("closing_stock", parcel, month) + tank)
+    return q.dual("feed_balance", parcel, month) + max(uses, default=0.0)
 
 
 def furnaces_table(q: Quantities) -> Table:
@@ -153,6 +172,7 @@ def slate_table(q: Quantities) -> Table:
         MONTH,
         Column("outlet", "Outlet"),
         Column("step", "Step", kind="count"),
+        Column("steps", "of steps", kind="count"),
         Column("cuts", "From"),
         Column("quantity", "Sold", kind="quantity"),
         Column("unit", "Unit"),
@@ -179,6 +199,7 @@ def slate_table(q: Quantities) -> Table:
                         "month": month,
                         "outlet": outlet,
                         "step": step,
+                        "steps": len(steps),
                         "cuts": " + ".join(case.outlets[outlet]),
                         "quantity": sold,
                         "unit": "TJ LHV" if case.outlets[outlet][0] in case.heat_cuts else "kt",
@@ -213,6 +234,7 @@ def recovery_table(q: Quantities) -> Table:
         Column("minimum", "Minimum", kind="quantity"),
         Column("maximum", "Maximum", kind="quantity"),
         Column("rate_unit", "Unit"),
+        Column("measure", "Measured as"),
         Column("share", "Loaded", "%", "share"),
         Column("worth", "Worth of one more unit", kind="price"),
         Column("worth_unit", "Worth unit"),
@@ -234,6 +256,7 @@ def recovery_table(q: Quantities) -> Table:
                     "minimum": None if limit.low is None else limit.low * limit.scale,
                     "maximum": None if limit.high is None else limit.high * limit.scale,
                     "rate_unit": limit.unit,
+                    "measure": limit.measure,
                     "share": load / limit.high if limit.high else None,
                     "worth": abs(dual) if abs(dual) > 1e-9 else 0.0,
                     "worth_unit": f"{case.currency}/{limit.worth_unit}",

@@ -64,6 +64,7 @@ class Limit:
     place_low: Place | None = None
     place_high: Place | None = None
     reason: str = ""
+    measure: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -339,6 +340,7 @@ class Reader:
         worth: tuple[str, float] | None = None,
         places: tuple[Place | None, Place | None] = (None, None),
         reason: str = "",
+        measure: str = "",
     ) -> None:
         """Add a limit with at least one side; a minimum of zero says nothing and is left out."""
         low, high = sides
@@ -351,7 +353,7 @@ class Reader:
             self.findings.error(place, ".".join(key), text)
         worth_unit, worth_scale = worth or (unit.removeprefix("k"), 1.0)
         self.case.limits[family, *key] = Limit(
-            family, key, label, low, high, unit, scale, worth_unit, worth_scale, month, places[0], places[1], reason
+            family, key, label, low, high, unit, scale, worth_unit, worth_scale, month, places[0], places[1], reason, measure
         )
 
 

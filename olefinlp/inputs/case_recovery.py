@@ -119,11 +119,12 @@ def _read_capacity(reader: Reader, unit: RecoveryUnit, period: Period) -> None:
         unit.name,
         (most * unit.min_load, most),
         month=period.name,
-        unit=f"{unit.rate_unit} {unit.measure}".strip(),
+        unit=unit.rate_unit,
         scale=1000 / period.hours / one,
         worth=(unit_measure(unit).unit, one),
         places=(unit.place, place),
         reason=reason,
+        measure=unit.measure,
     )
 
 

@@ -67,9 +67,7 @@ def check_yields_have_mode(plant: Plant, findings: Findings) -> None:
     for key, row in plant.yields.items():
         if key not in used:
             path = f"yields.{row.table}.{row.feed}.{row.severity}"
-            findings.warn(
-                row.place, path, "no mode uses these yields", f"add the mode to {plant.file.modes}, or take the row away"
-            )
+            findings.warn(row.place, path, "no mode uses these yields", f"add its mode to {plant.file.modes}, or delete it")
 
 
 def check_feed_has_mode(plant: Plant, findings: Findings) -> None:

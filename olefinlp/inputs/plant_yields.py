@@ -201,7 +201,7 @@ def check_reaction_heat(plant: Plant, findings: Findings) -> None:
         needed = sum((heat or 0.0) * value for heat, value in parts) - of_feed
         if mode.fired_heat < needed - _NOISE:
             message = (
-                f"the fired heat {mode.fired_heat:.3g} GJ/t LHV is below the reaction heat of the yields, {needed:.3g} GJ/t LHV"
+                f"the fired heat is {mode.fired_heat:.3g} GJ/t LHV, the reaction heat of these yields is {needed:.3g} GJ/t LHV"
             )
             hint = "check the unit of fired_heat, the yields and the feed's heating value"
             findings.error(at(mode.place, "fired_heat"), f"modes.{mode.name}", message, hint)
@@ -243,9 +243,8 @@ def check_nothing_left_to_recycle(plant: Plant, findings: Findings) -> None:
         if table is None or table.basis != "once_through" or feed is None or not feed.mainly:
             continue
         left = row.shares.get(feed.mainly, 0.0)
-        if left < HARDLY_LEFT and recycles_of(plant, feed.mainly):
-            message = (
-                f"only {100 * left:.2f} wt% {feed.mainly} is left although `{recycles_of(plant, feed.mainly)[0]}` recycles it"
-            )
+        recycles = recycles_of(plant, feed.mainly)
+        if left < HARDLY_LEFT and recycles:
+            message = f"only {100 * left:.2f} wt% {feed.mainly} is left, although `{recycles[0]}` recycles it"
             hint = f"are these yields to extinction? then the basis of `{row.table}` is ultimate, without the recycle feed"
             findings.warn(at(row.place, feed.mainly), _row_path(row), message, hint)

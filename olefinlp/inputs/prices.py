@@ -6,6 +6,7 @@ effective price, in the scenario's currency per t, GJ LHV, MWh or piece.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
@@ -15,9 +16,10 @@ from olefinlp.inputs.measures import ANY, EACH, HEAT, MASS, POWER, Measure
 from olefinlp.inputs.periods import Period
 from olefinlp.inputs.scenario import Scenario
 from olefinlp.inputs.tables import Row, Table
-from olefinlp.inputs.units import Quantity, UnitError, convert, parse_unit
+from olefinlp.inputs.units import SHARES, Quantity, UnitError, convert, parse_unit
 from olefinlp.inputs.yaml_files import Path_
 
+MONTH = r"\d{4}-(0[1-9]|1[0-2])"
 LAST_WORDS = ("price", "cost")
 
 
@@ -104,12 +106,15 @@ class PriceBook:
 
     def _table_rows(self, table: Table) -> dict[str, dict[str, Row]]:
         rows: dict[str, dict[str, Row]] = {}
+        months = [period.name for period in self.scenario.periods]
         heads = {name.split(".")[0] for name in self.items} | {"indexes"}
         for row in table:
             name = row.text("item")
             for word in LAST_WORDS:
                 name = name.removesuffix(f".{word}")
             month = row.cells.get("month", "")
+            if month and month not in months and not re.fullmatch(MONTH, month):
+                self.findings.error(row.place("month"), name, f"`{month}` is not a month", near_name(month, months))
             first = rows.setdefault(name, {}).setdefault(month, row)
             if first is not row:
                 self.findings.error(row.place("item"), name, f"is written twice, first in line {first.line}")
@@ -129,7 +134,7 @@ class PriceBook:
             "utilities": self.scenario.plant.trades(),
             "stocks": (*plant.feeds, *plant.cuts),
         }
-        offered = parts[0] == "feeds" and len(parts) > 1 and parts[1] in self.scenario.file.feeds
+        offered = len(parts) > 1 and parts[0] in known and parts[1] in getattr(self.scenario.file, parts[0])
         return len(parts) > 1 and parts[1] in known.get(parts[0], ()) and not offered
 
     def _price(self, name: str, period: Period) -> Price | None:
@@ -163,8 +168,8 @@ class PriceBook:
         row = rows.get(month) or rows.get("")
         if row is None:
             file = self.scenario.file.prices
-            where = f"`price:` here, or a row `{item.item}` in {file}" if file else "`price:` here"
-            word = "deduction" if item.path[-1] == "deduction" else "price"
+            word = item.path[-1]
+            where = f"`{word}:` here, or a row `{item.item}` in {file}" if file else f"`{word}:` here"
             self.findings.error(self._place(item), item.item, f"has no {word}", f"write {where}")
             return None
         return self._from_row(item, row)
@@ -188,7 +193,7 @@ class PriceBook:
             self.findings.warn(row.place("basis"), item.item, "does not say its basis", "delivered or not, which gallons …")
         of = row.cells.get("relative_to", "")
         written = PriceWritten(quantity)
-        if of and unit.share:
+        if of and unit.share in SHARES:
             written = PriceWritten(None, of, number * unit.factor)
         elif of:
             written = PriceWritten(None, of, 1.0, quantity)

@@ -91,8 +91,8 @@ class Scenario:
         data = copy.deepcopy(self.document.data)
         lines = dict(self.document.lines)
         for name, value in {**(changes or {}), **fields}.items():
-            _set(data, tuple(name.split(".")), value, findings, self.document)
-            lines = {path: line for path, line in lines.items() if path[: name.count(".") + 1] != tuple(name.split("."))}
+            written = _set(data, tuple(name.split(".")), copy.deepcopy(value), findings, self.document)
+            lines = {path: line for path, line in lines.items() if path[: len(written)] != written}
         findings.stop_on_errors()
         document = replace(self.document, data=data, lines=lines)
         plant = None if "plant" in fields or "plant" in (changes or {}) else self.plant
@@ -124,25 +124,28 @@ def load_scenario(path: str | os.PathLike[str], findings: Findings) -> Scenario 
     return _scenario(Path(path), document, None, findings) if document else None
 
 
-def _set(data: Any, path: Path_, value: Any, findings: Findings, document: Document) -> None:
-    """Set one value in nested mappings and lists, making mappings that are missing."""
+def _set(data: Any, path: Path_, value: Any, findings: Findings, document: Document) -> Path_:
+    """Set one value in nested mappings and lists, making mappings that are missing; the path as lines are kept."""
+    written: Path_ = ()
     for depth, part in enumerate(path):
         last = depth == len(path) - 1
         name = ".".join(map(str, path))
         if isinstance(data, list):
             if not str(part).isdigit() or not 1 <= int(part) <= len(data):
-                findings.error(document.place(path[:depth]), name, f"`{part}` is not in this list of {len(data)}")
-                return
+                findings.error(document.place(written), name, f"`{part}` is not in this list of {len(data)}")
+                return path
             part = int(part) - 1
         elif not isinstance(data, dict):
-            findings.error(document.place(path[:depth]), name, f"`{path[depth - 1]}` is a value, it has no `{part}`")
-            return
+            findings.error(document.place(written), name, f"`{path[depth - 1]}` is a value, it has no `{part}`")
+            return path
+        written = (*written, part)
         if last:
             data[part] = value
         elif isinstance(data, list):
             data = data[part]
         else:
             data = data.setdefault(part, {})
+    return written
 
 
 def _scenario(path: Path, document: Document, plant: Plant | None, findings: Findings) -> Scenario | None:

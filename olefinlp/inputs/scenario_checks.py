@@ -7,13 +7,14 @@ What clashes only through the whole plant is for the plan itself to find.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterator
 from dataclasses import dataclass
 
-from olefinlp.inputs.case import Case, Limit, Part
+from olefinlp.inputs.case import Case, Limit
 from olefinlp.inputs.findings import Findings, Place
 from olefinlp.inputs.scenario_prices import check_prices, high_of
 from olefinlp.inputs.scenario_references import check_references
+from olefinlp.inputs.scenario_unbounded import check_unbounded, cuts_made, recycle_modes
 
 __all__ = ["check_case", "check_references"]
 TINY = 1e-9
@@ -34,10 +35,6 @@ def check_case(case: Case, findings: Findings) -> None:
         check(case, findings)
 
 
-def _path(*names: str) -> str:
-    return ".".join(names)
-
-
 # ---------------------------------------------------------------------------------- buying
 
 
@@ -48,12 +45,12 @@ def check_take_or_pay(case: Case, findings: Findings) -> None:
             limit, most = case.limits.get(("take_or_pay", label, month)), high_of(case, "purchase", label, month)
             if limit and limit.low is not None and most is not None and limit.low > most + TINY:
                 message = f"take-or-pay of {limit.low:.6g} kt is more than can be bought, {most:.6g} kt"
-                findings.error(_low(limit), _path(source.kind, label, "take_or_pay"), message)
+                findings.error(_low(limit), f"{source.kind}.{label}.take_or_pay", message)
             share = case.shortfall_pays[label, month]
             if not 0 <= share <= 1:
                 path = (source.kind, source.feed, source.name, "shortfall_pays")
                 message = f"a shortfall pays {100 * share:.6g} % of the price, it must be from 0 to 100 %"
-                findings.error(case.scenario.document.place(path), _path(*path), message)
+                findings.error(case.scenario.document.place(path), ".".join(path), message)
 
 
 def _low(limit: Limit) -> Place:
@@ -75,9 +72,7 @@ def check_takes_have_modes(case: Case, findings: Findings) -> None:
     for feed, limit in _takes(case):
         if feed not in cracked:
             message = f"{limit.low:.6g} kt of {feed} must be bought, but no mode cracks it"
-            findings.error(
-                _low(limit), _path("feeds", limit.key[0], "min"), message, "take the minimum away, or add a mode to the plant"
-            )
+            findings.error(_low(limit), f"feeds.{limit.key[0]}.min", message, "take the minimum away, or add a mode to the plant")
 
 
 # ---------------------------------------------------------------------------------- takes and furnace hours
@@ -102,7 +97,7 @@ def check_takes_fit(case: Case, findings: Findings) -> None:
     """
     able = _able_groups(case)
     reported: list[frozenset[str]] = []
-    for groups in _group_sets(case, able):
+    for groups in _group_sets(able):
         if any(groups >= smaller for smaller in reported):
             continue
         for span in _spans(case):
@@ -115,14 +110,14 @@ def _able_groups(case: Case) -> dict[str, frozenset[str]]:
     """Feeds that must be cracked, and the groups that can; left out where some group has no end of hours."""
     must = {feed for feed, _ in _takes(case)} | {item for item, stock in case.stocks.items() if stock.is_feed}
     found = {}
-    for feed in must:
+    for feed in [feed for feed in case.parcels if feed in must]:
         groups = frozenset(case.mode_group[mode] for mode in case.modes if case.mode_feed[mode] == feed)
         if groups and all(("furnace_hours", group, case.months[0]) in case.limits for group in groups):
             found[feed] = groups
     return found
 
 
-def _group_sets(case: Case, able: dict[str, frozenset[str]]) -> list[frozenset[str]]:
+def _group_sets(able: dict[str, frozenset[str]]) -> list[frozenset[str]]:
     """Sets of groups worth asking, small ones first: those of one feed, of two, and of all."""
     sets = set(able.values())
     sets |= {one | other for one in able.values() for other in able.values()}
@@ -188,7 +183,7 @@ def check_opening_stocks(case: Case, findings: Findings) -> None:
         limit = case.limits.get(("stock", item, case.months[0]))
         if limit is None:
             continue
-        place, path = case.scenario.document.place(("stocks", item, "opening")), _path("stocks", item, "opening")
+        place, path = case.scenario.document.place(("stocks", item, "opening")), f"stocks.{item}.opening"
         if limit.high is not None and opening > limit.high + TINY:
             message = f"the tank opens with {opening:.6g} kt, above its largest stock of {limit.high:.6g} kt"
             findings.warn(place, path, message, f"the rest must leave in {limit.month}")
@@ -203,7 +198,7 @@ def check_end_stocks(case: Case, findings: Findings) -> None:
         end, tank = case.limits.get(("end_stock", item)), case.limits.get(("stock", item, case.months[-1]))
         if end and tank and end.low is not None and tank.high is not None and end.low > tank.high + TINY:
             message = f"{end.low:.6g} kt must be there at the end, but the tank holds {tank.high:.6g} kt"
-            findings.error(_low(end), _path("stocks", item, "end"), message, f"its largest stock: {tank.place_high}")
+            findings.error(_low(end), f"stocks.{item}.end", message, f"its largest stock: {tank.place_high}")
 
 
 # ---------------------------------------------------------------------------------- ways out
@@ -218,141 +213,18 @@ def _made_from(case: Case, month: str) -> Iterator[dict[str, float]]:
             yield case.compositions[source.feed]
 
 
-def _cuts_made(case: Case, shares: dict[str, float]) -> set[str]:
-    return {cut for cut, row in case.recovery.items() if any(share > 0 and row.get(c, 0) > 0 for c, share in shares.items())}
-
-
-def _recycle_modes(case: Case, cut: str) -> list[str]:
-    """The modes that take a cut back into the furnaces."""
-    feeds = [feed for feed, own in case.scenario.plant.recycle_feeds().items() if own == cut]
-    return [mode for mode in case.modes if case.mode_feed[mode] in feeds]
-
-
 def check_cuts_leave(case: Case, findings: Findings) -> None:
     """A cut that is made can leave: not all of its outlets are closed."""
     closed: dict[str, list[str]] = {}
     for month in case.months:
-        made = set().union(*(_cuts_made(case, shares) for shares in _made_from(case, month)))
+        made = set().union(*(cuts_made(case, shares) for shares in _made_from(case, month)))
         for cut in case.cuts:
             outlets = [outlet for outlet, cuts in case.outlets.items() if cut in cuts]
             shut = bool(outlets) and all(high_of(case, "outlet", outlet, month) == 0 for outlet in outlets)
-            if cut in made and shut and cut not in case.stocks and not _recycle_modes(case, cut):
+            if cut in made and shut and cut not in case.stocks and not recycle_modes(case, cut):
                 closed.setdefault(cut, []).append(month)
     for cut, months in closed.items():
         outlets = [outlet for outlet, cuts in case.outlets.items() if cut in cuts]
         place = case.limits["outlet", outlets[0], months[0]].place_high or Place("")
         message = f"every way out of {cut} is closed in {', '.join(months)} ({', '.join(outlets)}): what makes it cannot run"
-        findings.warn(place, _path("outlets", outlets[0], "max"), message)
-
-
-# ---------------------------------------------------------------------------------- limits that are missing
-
-
-def check_unbounded(case: Case, findings: Findings) -> None:
-    """A source without a maximum meets nothing that ends: no furnace hours, no capacity, no sale.
-
-    Only what is without an end all the way is refused; what is bounded by a clash of several
-    limits is left to the plan.
-    """
-    for month in case.months:
-        open_ways = _OpenWays(case, month)
-        for label, source in case.sources.items():
-            if high_of(case, "purchase", label, month) is not None or open_ways.capped("bought", label):
-                continue
-            found = open_ways.sale_of(label)
-            if found:
-                outlet_path = ("outlets", found, "max")
-                place = case.scenario.document.place((source.kind, source.feed, source.name, "max"))
-                other = case.scenario.document.place(outlet_path)
-                message = f"can be unbounded: nothing ends what is bought here and sold as {found} ({other})"
-                hint = "write a maximum for one of them, or hours or capacities that they use"
-                findings.error(place, _path(source.kind, label, "max"), message, hint)
-
-
-class _OpenWays:
-    """What can grow without end in one month, from the sources to the sales."""
-
-    def __init__(self, case: Case, month: str) -> None:
-        self.case = case
-        self.month = month
-        self.ends = set(self._ended(case.unit_parts, "unit_load")) | set(self._ended(case.sums, "named"))
-        self.ends |= set(self._utility_ends())
-        self.outlets = {name for name in case.outlets if self._outlet_open(name)}
-        self.modes = {mode for mode, _, _ in case.charges_in[month] if self._mode_open(mode)}
-        self.cuts = set(case.cuts)
-        while not self._settle():
-            pass
-
-    def capped(self, kind: str, *item: str) -> bool:
-        """Whether a quantity uses up something that ends."""
-        return (kind, item) in self.ends
-
-    def sale_of(self, label: str) -> str:
-        """An outlet to sale through which what is bought of a source leaves without end; empty if none."""
-        case, source = self.case, self.case.sources[label]
-        if source.kind == "feeds":
-            parcel = case.parcel_of[label, self.month]
-            ways = [case.yields[m, p] for m, p, _ in case.charges_in[self.month] if m in self.modes and p == parcel]
-        else:
-            composition = case.compositions[source.feed]
-            ways = [composition] if self._open(composition) else []
-        cuts = set().union(*(_cuts_made(case, shares) for shares in ways))
-        sales = (name for name in case.sale_tiers if name in self.outlets and cuts & set(case.outlets[name]))
-        return next(sales, "")
-
-    def _ended(self, sums: dict[str, tuple[Part, ...]], family: str) -> Iterator[tuple[str, tuple[str, ...]]]:
-        for name, parts in sums.items():
-            if high_of(self.case, family, name, self.month) is not None:
-                yield from self._positive(parts)
-
-    def _positive(self, parts: Iterable[Part], sign: float = 1.0) -> Iterator[tuple[str, tuple[str, ...]]]:
-        yield from ((part.kind, part.item) for part in parts if sign * part.coefficient > 0)
-
-    def _utility_ends(self) -> Iterator[tuple[str, tuple[str, ...]]]:
-        """What uses a utility that cannot be had without end, or makes one that cannot leave so."""
-        for name, parts in self.case.utilities.items():
-            if not self._trades_open(name, ("imports",)) and not self._conversion_open(name):
-                yield from self._positive(parts)
-            if not self._trades_open(name, ("exports", "emissions")):
-                made = self._positive(parts, -1.0)
-                yield from ((kind, item) for kind, item in made if kind not in ("outlet", "ingredient"))
-
-    def _trades_open(self, utility: str, kinds: tuple[str, ...]) -> bool:
-        trades = [trade for trade, (own, kind) in self.case.trades.items() if own == utility and kind in kinds]
-        return any(high_of(self.case, "trade", trade, self.month) is None for trade in trades)
-
-    def _conversion_open(self, utility: str) -> bool:
-        makers = [name for name, flows in self.case.conversions.items() if flows.get(utility, 0.0) < 0]
-        return any(high_of(self.case, "conversion", name, self.month) is None for name in makers)
-
-    def _outlet_open(self, outlet: str) -> bool:
-        case = self.case
-        limited = high_of(case, "outlet", outlet, self.month) is not None or self.capped("outlet", outlet)
-        blended = any(key[0] == outlet for key in case.specifications)
-        mixed = any(self.capped("ingredient", outlet, cut) for cut in case.outlets[outlet])
-        return not (limited or blended or mixed)
-
-    def _mode_open(self, mode: str) -> bool:
-        case, group = self.case, self.case.mode_group[mode]
-        hours = high_of(case, "furnace_hours", group, self.month)
-        crews = high_of(case, "decoke_crew_hours", self.month) if case.decoke_hours_per_kt[mode] else None
-        return hours is None and crews is None and not self.capped("charge", mode)
-
-    def _open(self, shares: dict[str, float]) -> bool:
-        """Whether all that a tonne becomes can leave without end."""
-        pieces = all(not self.capped("component", c) for c, share in shares.items() if share > 0)
-        return pieces and _cuts_made(self.case, shares) <= self.cuts
-
-    def _settle(self) -> bool:
-        """Drop cuts and modes that no longer lead anywhere without end; True when nothing changed."""
-        case = self.case
-        cuts = {cut for cut in self.cuts if not self.capped("cut", cut) and self._cut_open(cut)}
-        yields = {mode: case.yields[mode, parcel] for mode, parcel, _ in case.charges_in[self.month]}
-        modes = {mode for mode in self.modes if self._open(yields[mode])}
-        settled = (cuts, modes) == (self.cuts, self.modes)
-        self.cuts, self.modes = cuts, modes
-        return settled
-
-    def _cut_open(self, cut: str) -> bool:
-        outlets = any(outlet in self.outlets for outlet, cuts in self.case.outlets.items() if cut in cuts)
-        return outlets or any(mode in self.modes for mode in _recycle_modes(self.case, cut))
+        findings.warn(place, f"outlets.{outlets[0]}.max", message)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Iterator, Mapping
 
 from olefinlp.inputs import case_outlets, case_supply, case_utilities
@@ -114,15 +115,14 @@ def _unit_hint(price: Price, item: PriceItem, basis: Basis, low: float, high: fl
 
 
 def _other_units(unit: str) -> Iterator[str]:
-    """Units that a price may have been meant in: per another amount first, then in cents or whole money too."""
+    """Units that a price may have been meant in: per another amount, in cents or whole money, as the trade quotes."""
     money, _, per = unit.partition("/")
     code = parse_unit(money).currency
     cents = "USc" if code == "USD" else f"c{code}"
     amounts = PER_HEAT if per.endswith(("LHV", "HHV")) else PER_POWER if per in PER_POWER else PER_MASS
-    for other in (money, code, cents):
-        for amount in amounts:
-            if f"{other}/{amount}" != unit:
-                yield f"{other}/{amount}"
+    quoted = (f"{code}/t", f"{code}/bbl", f"{cents}/lb", f"{cents}/gal")
+    texts = (*(f"{money}/{amount}" for amount in amounts), f"{code}/{per}", f"{cents}/{per}", *quoted)
+    yield from (text for text in texts if text != unit)
 
 
 # ---------------------------------------------------------------------------------- steps
@@ -139,11 +139,12 @@ def check_step_order(case: Case, findings: Findings) -> None:
 
 def _check_steps(case: Case, findings: Findings, items: list[str], sign: float, word: str) -> None:
     for month in case.months:
-        for step, (before, after) in enumerate(zip(items, items[1:], strict=False), start=2):
+        for step, (before, after) in enumerate(itertools.pairwise(items), start=2):
             first, second = case.prices[before, month], case.prices[after, month]
             if sign * (second.value - first.value) < -SMALL:
                 verb = "costs" if word == "less" else "pays"
-                message = f"step {step} {verb} {second.value:.6g} {second.unit_used}, {word} than step {step - 1} with {first.value:.6g}"
+                price = f"{second.value:.6g} {second.unit_used}"
+                message = f"step {step} {verb} {price}, {word} than step {step - 1} with {first.value:.6g}"
                 findings.error(second.place, second.item, message, DISCOUNT)
 
 

@@ -14,6 +14,7 @@ from olefinlp.inputs.measures import Measure
 from olefinlp.inputs.plant_references import known
 from olefinlp.inputs.plant_sums import check_limit_terms, check_limit_units, known_terms
 from olefinlp.inputs.price_windows import priced_items
+from olefinlp.inputs.prices import MONTH
 from olefinlp.inputs.ratios import outlet_measure, trade_measure
 from olefinlp.inputs.scenario import Scenario
 from olefinlp.inputs.scenario_file import Outage, SaleOutlet, UnitFactor
@@ -29,7 +30,6 @@ COST_WORDS = {
 }
 TERM_OF_COST = {"charge": "charged", "decoke": "charged", "outlet": "sold", "conversion": "converted"}
 CLOSED = {"t": "0 kt", "GJ LHV": "0 TJ LHV", "MWh": "0 GWh"}
-MONTH = r"\d{4}-(0[1-9]|1[0-2])"
 
 
 def check_references(scenario: Scenario, findings: Findings) -> None:
@@ -216,10 +216,11 @@ def check_stocks(scenario: Scenario, findings: Findings) -> None:
         elif name not in feeds and name in plant.cuts and name not in cuts:
             why = "is balanced as heat" if plant.cuts[name].balanced_as == "heat" else "is valued by content"
             _error(scenario, findings, path, f"the cut `{name}` {why}, so it has no tank", "take the entry away")
-        elif _known(scenario, findings, path, "feed or cut", name, dict.fromkeys((*feeds, *cuts))):
-            if stock.quality and name not in feeds:
-                message = "a cut has no quality, slopes are for what is cracked"
-                _error(scenario, findings, (*path, "quality"), message, "take it away")
+        else:
+            _known(scenario, findings, path, "feed or cut", name, dict.fromkeys((*feeds, *cuts)))
+        if stock.quality and name in cuts and name not in feeds:
+            message = "a cut has no quality, slopes are for what is cracked"
+            _error(scenario, findings, (*path, "quality"), message, "take it away")
 
 
 def check_limits(scenario: Scenario, findings: Findings) -> None:

@@ -208,7 +208,7 @@ def dispose(m: Any, case: Case) -> None:
     def cut_disposal(m: Any, k: str, t: str) -> Any:
         to_outlets = sum(m.disposition[o, k, t] for o in outlets_of[k])
         charged = sum(m.charge[mode, case.mode_feed[mode], t] for mode in recycled[k])
-        if k not in case.stocks:
+        if k not in case.stocks or case.stocks[k].is_feed:  # a feed and a cut may share a name
             return row(m, 0, to_outlets + charged - m.cut_made[k, t], 0)
         uses = to_outlets + charged + m.closing_stock[k, t] - m.cut_made[k, t]
         return _stock_row(case, k, t, uses, _opening(m, case, k, t))

@@ -112,9 +112,9 @@ class Solver:
     plant of a few pounds an hour is solved as exactly as one of a hundred kilotonnes a month.
     """
 
-    def __init__(self, lp: LabelledLp) -> None:
+    def __init__(self, lp: LabelledLp, scaled: bool = True) -> None:
         self.lp = lp
-        self.scale = _scale(lp)
+        self.scale = _scale(lp) if scaled else 1.0
         self.highs = _quiet_highs()
         with _no_banner():
             self._pass_model()

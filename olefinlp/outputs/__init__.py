@@ -1,1 +1,51 @@
 """Workbook, charts, csv, json, printed summary."""
+
+from __future__ import annotations
+
+import os
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from olefinlp.answers.plan import Plan
+    from olefinlp.inputs.scenario import Scenario
+
+__all__ = ["write_csv", "write_json", "write_lp", "write_workbook"]
+
+
+def write_workbook(plan: Plan, path: str | os.PathLike[str]) -> Path:
+    """Write a plan as a workbook, whole or not at all.
+
+    Quantities are values, every money cell is a live formula. Raises `OutputError`.
+    """
+    from olefinlp.outputs.workbook import write_workbook as write
+
+    return write(plan, path)
+
+
+def write_json(plan: Plan, path: str | os.PathLike[str]) -> Path:
+    """Write a plan as one JSON object, whole or not at all. Raises `OutputError`."""
+    from olefinlp.outputs.records import write_json as write
+
+    return write(plan, path)
+
+
+def write_csv(plan: Plan, folder: str | os.PathLike[str]) -> list[Path]:
+    """Write every table of a plan as csv into a folder. Raises `OutputError`."""
+    from olefinlp.outputs.records import write_csv as write
+
+    return write(plan, folder)
+
+
+def write_lp(scenario: Scenario, path: str | os.PathLike[str]) -> Path:
+    """Write the LP of a scenario as `.mps` or `.lp` with readable names. Raises `OutputError`."""
+    from olefinlp.lp.algebra import build_model
+    from olefinlp.lp.compile import compile_model
+    from olefinlp.lp.export import ENDINGS, export
+    from olefinlp.outputs.files import OutputError, write_whole
+
+    ending = Path(path).suffix.lower()
+    if ending not in ENDINGS:
+        raise OutputError(f"{path}: the file must end in {' or '.join(ENDINGS)}")
+    lp = compile_model(build_model(scenario.case))
+    return write_whole(path, lambda temporary: export(lp, temporary, ending))

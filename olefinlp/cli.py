@@ -1,0 +1,264 @@
+"""The command line: thin commands over the Python functions of the package.
+
+Heavy libraries are imported inside the commands, so that `--help` answers at once. Data go to
+standard output, everything else to standard error.
+"""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any, NoReturn
+
+import typer
+
+if TYPE_CHECKING:
+    from olefinlp.answers.plan import NoPlan, Plan
+    from olefinlp.inputs.findings import Finding, InputError
+    from olefinlp.inputs.scenario import Scenario
+
+EXIT_OUTPUT, EXIT_INPUT, EXIT_FAILED = 1, 2, 6
+
+app = typer.Typer(
+    help="Plan a month of a light-olefins plant: which feeds to buy, how to crack them, what to sell, for the best margin.",
+    epilog="Exit codes: 0 done, 1 output not written, 2 input wrong, 3 no plan possible, 4 margin without end, "
+    "5 stopped early, 6 solver or proof failed.",
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    no_args_is_help=True,
+)
+
+ScenarioFile = Annotated[Path | None, typer.Argument(help="Scenario file (yaml). The invented demo month if left out.")]
+PriceCase = Annotated[str | None, typer.Option(help="Another price case of the scenario's price table.")]
+
+
+@app.callback(invoke_without_command=True)
+def main(version: Annotated[bool, typer.Option("--version", help="Print the version and stop.")] = False) -> None:
+    """Make sure that any terminal can show what is printed; print the version if asked."""
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="replace")
+    if version:
+        from olefinlp import __version__
+
+        typer.echo(f"olefinlp {__version__}")
+        raise typer.Exit
+
+
+@app.command()
+def plan(
+    scenario: ScenarioFile = None,
+    output: Annotated[Path | None, typer.Option("--output", "-o", help="Workbook to write. <scenario>_plan.xlsx if left out.")] = None,
+    price_case: PriceCase = None,
+    json_file: Annotated[
+        str | None, typer.Option("--json", metavar="FILE", help="Also write the plan as JSON; - for standard output.")
+    ] = None,
+    csv_folder: Annotated[Path | None, typer.Option("--csv", metavar="DIR", help="Also write every table as csv.")] = None,
+    quick: Annotated[bool, typer.Option("--quick", help="The plan and its workbook only, no further answers.")] = False,  # noqa: ARG001
+) -> None:
+    """Make the best plan, prove it, print a summary and write a workbook."""
+    import pyomo.environ  # noqa: F401  # first: it is three times slower to load after scipy
+
+    from olefinlp.outputs import write_csv, write_workbook
+    from olefinlp.outputs.files import OutputError
+    from olefinlp.outputs.records import plan_json
+    from olefinlp.outputs.summary import summary
+
+    path = _scenario_path(scenario)
+    if scenario is None:
+        _note(f"no scenario given: planning the invented demo, {_shown(path)}")
+    made = _make_plan(path, price_case, json_file)
+    if json_file == "-":
+        typer.echo(plan_json(made), nl=False)
+    else:
+        typer.echo(summary(made))
+    target = output or Path(f"{path.stem}_plan.xlsx")
+    try:
+        written = [write_workbook(made, target)]
+        if json_file and json_file != "-":
+            from olefinlp.outputs import write_json
+
+            written.append(write_json(made, json_file))
+        if csv_folder:
+            write_csv(made, csv_folder)
+            written.append(csv_folder)
+    except OutputError as error:
+        _stop(str(error), EXIT_OUTPUT)
+    _note("\nwritten: " + ", ".join(_shown(p) for p in written))
+
+
+@app.command()
+def check(path: Annotated[Path, typer.Argument(help="Scenario file, plant.yaml, or plant folder.")]) -> None:
+    """Check a plant or a scenario without solving it; everything found is printed at once."""
+    from olefinlp.inputs.findings import Findings
+    from olefinlp.inputs.plant import load_plant
+    from olefinlp.inputs.scenario import load_scenario
+
+    findings = Findings()
+    if path.is_dir() or path.name == "plant.yaml":
+        load_plant(path, findings)
+    else:
+        load_scenario(path, findings)
+    _print_findings(tuple(findings))
+    if findings.errors:
+        raise typer.Exit(EXIT_INPUT)
+    warnings = len(findings.warnings)
+    typer.echo(f"{_shown(path)}: no errors, {_count(warnings, 'warning')}")
+
+
+@app.command()
+def export(
+    scenario: Annotated[Path, typer.Argument(help="Scenario file (yaml).")],
+    file: Annotated[Path, typer.Argument(help="File to write, ending in .mps or .lp.")],
+    price_case: PriceCase = None,
+) -> None:
+    """Write the linear program with readable names, for any solver."""
+    import pyomo.environ  # noqa: F401
+
+    from olefinlp.outputs import write_lp
+    from olefinlp.outputs.files import OutputError
+
+    try:
+        write_lp(_read(scenario, price_case), file)
+    except OutputError as error:
+        _stop(str(error), EXIT_OUTPUT)
+    _note(f"written: {_shown(file)} (kt, TJ, GWh, h, thousands of the currency; maximise)")
+
+
+@app.command()
+def new(folder: Annotated[Path, typer.Argument(help="Folder to put the starter plants and scenarios in.")]) -> None:
+    """Put the invented starter plants and scenarios into a folder, to change into your own."""
+    from olefinlp.starter_files import DEFAULT, copy_starter
+
+    try:
+        files = copy_starter(folder)
+    except FileExistsError as error:
+        _stop(f"{error} is there already; nothing was copied\nhint: name a new folder", EXIT_OUTPUT)
+    except OSError as error:
+        _stop(f"{folder} cannot be written to: {error.strerror or error}", EXIT_OUTPUT)
+    typer.echo(f"{len(files)} files written to {folder}; what every field means: models/README.md and scenarios/README.md there")
+    typer.echo(f"next: olefinlp plan {folder / DEFAULT}")
+
+
+@app.command()
+def schema(
+    what: Annotated[str, typer.Argument(help="`scenario` or `plant`.")] = "scenario",
+    output: Annotated[Path | None, typer.Option("--output", "-o", help="File to write; standard output if left out.")] = None,
+) -> None:
+    """Print the JSON Schema of a file, with which an editor completes and checks it."""
+    from olefinlp.outputs.files import OutputError, write_text
+    from olefinlp.outputs.schema import schema_json
+
+    try:
+        text = schema_json(what)
+    except KeyError:
+        _stop(f"`{what}` has no schema; known: scenario, plant", EXIT_INPUT)
+    if output is None:
+        typer.echo(text, nl=False)
+        return
+    try:
+        write_text(output, text)
+    except OutputError as error:
+        _stop(str(error), EXIT_OUTPUT)
+    _note(f"written: {_shown(output)}")
+
+
+def _scenario_path(path: Path | None) -> Path:
+    from olefinlp.starter_files import default_scenario
+
+    return path or default_scenario()
+
+
+def _read(path: Path, price_case: str | None) -> Scenario:
+    """A scenario; ends the command with everything that is wrong."""
+    from olefinlp.inputs.findings import InputError
+    from olefinlp.inputs.scenario import read_scenario
+
+    try:
+        scenario = read_scenario(path)
+        return scenario.with_(price_case=price_case) if price_case else scenario
+    except InputError as error:
+        _stop_on_input(error)
+
+
+def _make_plan(path: Path, price_case: str | None, json_file: str | None) -> Plan:
+    """A plan; ends the command with the reason when there is none."""
+    from olefinlp.answers.balances import BalanceError
+    from olefinlp.answers.plan import NoPlan, make_plan
+    from olefinlp.inputs.findings import InputError
+    from olefinlp.inputs.scenario import read_scenario
+    from olefinlp.lp.certificate import CertificateError
+    from olefinlp.lp.solver import EXIT_CODES
+
+    try:
+        scenario = read_scenario(path)
+        return make_plan(scenario.with_(price_case=price_case) if price_case else scenario)
+    except InputError as error:
+        _failure_json(json_file, {"status": "input_error", "findings": [str(f) for f in error.findings]})
+        _stop_on_input(error)
+    except NoPlan as error:
+        _failure_json(json_file, _no_plan_record(error))
+        _stop(str(error), EXIT_CODES[error.status])
+    except (CertificateError, BalanceError) as error:
+        _failure_json(json_file, {"status": "not_proven", "message": str(error)})
+        _stop(f"{error}\nhint: this is a fault of the tool or of extreme numbers, not a plan; please report it", EXIT_FAILED)
+
+
+def _no_plan_record(error: NoPlan) -> dict[str, Any]:
+    record: dict[str, Any] = {"status": error.status.value, "message": str(error)}
+    if error.clash:
+        record["clash"] = [
+            {"month": c.month, "limit": c.text, "place": str(c.place or ""), "reason": c.reason} for c in error.clash.limits
+        ]
+    return record
+
+
+def _failure_json(target: str | None, record: dict[str, Any]) -> None:
+    """A script that asked for JSON gets JSON, whatever happened."""
+    if target is None:
+        return
+    import json
+
+    from olefinlp.outputs.files import OutputError, write_text
+
+    text = json.dumps(record, indent=1, ensure_ascii=False) + "\n"
+    if target == "-":
+        typer.echo(text, nl=False)
+        return
+    try:
+        write_text(target, text)
+    except OutputError as error:
+        _note(str(error))
+
+
+def _stop_on_input(error: InputError) -> NoReturn:
+    _print_findings(error.findings)
+    raise typer.Exit(EXIT_INPUT)
+
+
+def _print_findings(findings: tuple[Finding, ...]) -> None:
+    for finding in findings:
+        _note(f"{finding}\n")
+    errors = sum(f.level == "error" for f in findings)
+    if errors:
+        _note(", ".join([_count(errors, "error"), _count(len(findings) - errors, "warning")]))
+
+
+def _count(number: int, word: str) -> str:
+    return f"{number} {word}{'' if number == 1 else 's'}"
+
+
+def _stop(message: str, code: int) -> NoReturn:
+    _note(message)
+    raise typer.Exit(code)
+
+
+def _note(message: str) -> None:
+    typer.echo(message, err=True)
+
+
+def _shown(path: Path) -> str:
+    from olefinlp.inputs.findings import shown
+
+    return shown(path)

@@ -1,0 +1,82 @@
+"""The tables of a plan for scripts: one JSON object, or a folder of csv files."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+import os
+from pathlib import Path
+from typing import Any
+
+from olefinlp.answers.plan import Plan
+from olefinlp.answers.tables import Table
+from olefinlp.outputs.files import OutputError, write_text
+
+
+def plan_record(plan: Plan) -> dict[str, Any]:
+    """A plan as plain values: margins in the currency itself, tables as lists of records.
+
+    Keys: status, title, plant, currency, price_case, margin (before fixed cost, all months),
+    fixed_cost, months, then one list a table (feeds, furnaces, slate, limits …).
+    """
+    months = [
+        {
+            "month": p.name,
+            "hours": p.hours,
+            "margin": plan.margin_of(p.name),
+            "fixed_cost": plan.fixed_cost(p.name),
+            "main_product_t": plan.main_product(p.name),
+            "margin_per_t": plan.margin_per_tonne(p.name),
+        }
+        for p in plan.quantities.case.periods
+    ]
+    head: dict[str, Any] = {
+        "status": plan.status,
+        "title": plan.scenario.title,
+        "plant": plan.scenario.plant.name,
+        "currency": plan.currency,
+        "price_case": plan.scenario.file.price_case,
+        "margin": plan.margin,
+        "fixed_cost": plan.fixed_cost(),
+        "months": months,
+        "units": {t.name: {c.key: c.unit for c in t.columns if c.unit} for t in plan.tables()},
+        "warnings": [str(w) for w in plan.warnings],
+    }
+    return head | {table.name: [_plain(row) for row in table.rows] for table in plan.tables()}
+
+
+def _plain(row: dict[str, Any]) -> dict[str, Any]:
+    """A record that JSON can hold: no infinities."""
+    return {key: None if isinstance(value, float) and not math.isfinite(value) else value for key, value in row.items()}
+
+
+def plan_json(plan: Plan) -> str:
+    """A plan as one JSON object, ending in a line feed."""
+    return json.dumps(plan_record(plan), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def write_json(plan: Plan, path: str | os.PathLike[str]) -> Path:
+    """Write a plan as JSON, whole or not at all. Raises `OutputError`."""
+    return write_text(path, plan_json(plan))
+
+
+def table_csv(table: Table) -> str:
+    """A table as csv text: one header row of keys (with units in brackets), unrounded numbers."""
+    text = io.StringIO(newline="")
+    writer = csv.writer(text, lineterminator="\n")
+    writer.writerow([f"{c.key} [{c.unit}]" if c.unit else c.key for c in table.columns])
+    for row in table.rows:
+        writer.writerow(["" if row[c.key] is None else row[c.key] for c in table.columns])
+    return text.getvalue()
+
+
+def write_csv(plan: Plan, folder: str | os.PathLike[str]) -> list[Path]:
+    """Write every table of a plan as a csv file into a folder, which is made if it is not there."""
+    target = Path(folder)
+    try:
+        target.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise OutputError(f"{target} is no folder that can be written to: {error.strerror or error}") from error
+    return [write_text(target / f"{table.name}.csv", table_csv(table)) for table in plan.tables()]

@@ -1,0 +1,96 @@
+"""Fixtures of the whole suite: the shipped files and their plans, from whatever folder the tests are started."""
+
+from __future__ import annotations
+
+import os
+import sys
+from collections.abc import Callable, Iterator
+from functools import cache
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import pytest
+from hypothesis import HealthCheck, settings
+
+TESTS = Path(__file__).resolve().parent
+ROOT = TESTS.parent
+# helper modules beside the tests first; the checkout last, so that an installed package is the one tested
+sys.path[:0] = [str(TESTS)]
+sys.path.append(str(ROOT))
+
+import pyomo.environ  # noqa: E402, F401  # before scipy and pint: far slower to load after them
+
+if TYPE_CHECKING:
+    from olefinlp.answers.plan import Plan
+    from olefinlp.inputs.scenario import Scenario
+
+SCENARIOS = (
+    "brackwater_2031_03.yaml",
+    "brackwater_2031_04.yaml",
+    "brackwater_2031_03_to_08.yaml",
+    "marram_point_2031_03.yaml",
+    "thermal_cracker.yaml",
+)
+
+settings.register_profile(
+    "repeatable",
+    derandomize=True,
+    deadline=None,
+    max_examples=25,
+    database=None,
+    suppress_health_check=[HealthCheck.too_slow, HealthCheck.function_scoped_fixture],
+)
+settings.load_profile("repeatable")
+
+
+@cache
+def _scenario(name: str) -> Scenario:
+    from olefinlp.inputs.scenario import read_scenario
+
+    return read_scenario(ROOT / "scenarios" / name)
+
+
+@cache
+def _plan(name: str) -> Plan:
+    from olefinlp.answers.plan import make_plan
+
+    return make_plan(_scenario(name))
+
+
+@pytest.fixture(scope="session")
+def root() -> Path:
+    """The top folder of the repository."""
+    return ROOT
+
+
+@pytest.fixture(scope="session")
+def shipped_scenario() -> Callable[[str], Scenario]:
+    """A shipped scenario by its file name, read once a session."""
+    return _scenario
+
+
+@pytest.fixture(scope="session")
+def shipped_plan() -> Callable[[str], Plan]:
+    """The plan of a shipped scenario by its file name, made once a session."""
+    return _plan
+
+
+@pytest.fixture(params=SCENARIOS)
+def every_plan(request: pytest.FixtureRequest) -> Plan:
+    """The plan of each shipped scenario in turn."""
+    return _plan(request.param)
+
+
+@pytest.fixture(scope="session")
+def march() -> Plan:
+    """The plan of March 2031, the case most checks begin with."""
+    return _plan("brackwater_2031_03.yaml")
+
+
+@pytest.fixture
+def at_root() -> Iterator[Path]:
+    """The repository's top folder as the working folder."""
+    before = Path.cwd()
+    os.chdir(ROOT)
+    yield ROOT
+    os.chdir(before)
