@@ -274,7 +274,7 @@ def test_ratio_limits_too():
         "ratio_limits.heavy.to.1.charged\n  unknown feed, `group.feed`, group or `all` `gas_furnace`\n"
         "hint: did you mean `gas_furnaces`?",
         f"ratio_limits.quench_oil_viscosity\n  the plant has `quench_oil_viscosity` already: {where}\nhint: give this one another name",
-        "ratio_limits.heavy.of.1.bought\n  `gas_oil.barge` is not a source of this scenario\nhint: known: spot_barge",
+        "ratio_limits.heavy.of.1.bought\n  `gas_oil.barge` is not a source of this scenario\nhint: did you mean `spot_barge`?",
     ]
 
 
@@ -446,8 +446,8 @@ def test_what_must_be_bought_has_a_mode(edited):
 
 def test_minimum_purchases_fit_into_the_furnaces_that_can_crack_them():
     """Least hours of condensate and gas oil: 1000 / charge × (1 + decoke / run length) of their best modes."""
-    big = {"min": "90 kt", "max": "900 kt"}
-    changes = {"feeds.gas_oil.spot_barge": big, "feeds.condensate.spot_cargo": big}
+    changes = {f"feeds.{source}.{side}": amount for source in ("gas_oil.spot_barge", "condensate.spot_cargo")
+               for side, amount in (("min", "90 kt"), ("max", "900 kt"))}  # fmt: skip
     case = shipped(MARCH).case
     least = sum(min(case.hours_per_kt[m] for m in case.modes if case.mode_feed[m] == f) for f in ("gas_oil", "condensate"))
     there = 3 * 744 * 0.975
@@ -462,22 +462,19 @@ def test_minimum_purchases_fit_into_the_furnaces_that_can_crack_them():
 
 
 def test_minimum_purchases_that_share_groups():
-    """Each alone would fit, together they do not."""
-    case = shipped(MARRAM).case
-    hours = sum(case.limits["furnace_hours", group, "2031-03"].high or 0 for group in ("thermal_furnaces", "catalytic_crackers"))
-    best = {f: min(case.hours_per_kt[m] for m in case.modes if case.mode_feed[m] == f) for f in ("light_naphtha", "heavy_naphtha")}
-    amounts = {feed: round(0.6 * hours / each) for feed, each in best.items()}
+    """Each of two naphthas alone would fit into the flexible and liquid furnaces, together they do not."""
+    case = shipped(MARCH).case
+    groups = ("flexible_furnaces", "liquid_furnaces")
+    hours = sum(case.limits["furnace_hours", group, "2031-03"].high or 0 for group in groups)
+    least = {f: min(case.hours_per_kt[m] for m in case.modes if case.mode_feed[m] == f) for f in ("light_naphtha", "full_range_naphtha")}
     changes = {
-        "feeds.light_naphtha.contract": {"min": f"{amounts['light_naphtha']} kt", "max": "900 kt", "price": "500 EUR/t"},
-        "feeds.heavy_naphtha.cargo": {"min": f"{amounts['heavy_naphtha']} kt", "max": "900 kt", "price": "500 EUR/t"},
+        "feeds.light_naphtha.spot": {"min": f"{0.6 * hours / least['light_naphtha']:.3f} kt", "max": "900 kt"},
+        "feeds.full_range_naphtha.spot_cargo": {"min": f"{0.6 * hours / least['full_range_naphtha']:.3f} kt", "max": "900 kt"},
     }
-    (message,) = found(MARRAM, changes)
-    assert message.startswith(
-        f"feeds\n  {amounts['light_naphtha']} kt of light_naphtha, {amounts['heavy_naphtha']} kt of heavy_naphtha "
-        "must be cracked in 2031-03: this needs at least "
-    )
-    alone = {key: {**entry, "min": "0 kt"} if "heavy" in key else entry for key, entry in changes.items()}
-    assert found(MARRAM, alone) == []
+    (message,) = found(MARCH, changes)
+    assert f"this needs at least {1.2 * hours:,.0f} h of flexible_furnaces and liquid_furnaces, there are {hours:,.0f} h\n" in message
+    for key, entry in changes.items():
+        assert found(MARCH, {key: entry}) == []
 
 
 def test_what_the_tank_cannot_keep_must_be_cracked():
@@ -608,6 +605,7 @@ def test_a_side_stream_that_nothing_limits_is_refused(edited):
     edits = [
         (units, "propylene_splitter,33,t/h,propylene equivalent,45", "propylene_splitter,unlimited,t/h,propylene equivalent,0"),
         (units, "refinery_propylene_treater,5", "refinery_propylene_treater,unlimited"),
+        (scenario, "crude_c4_sale:  {max: 22 kt", "crude_c4_sale:  {max: unlimited"),
         (scenario, "neighbour: {max: 3.2 kt", "neighbour: {max: unlimited"),
         (scenario, "propylene_sale: {min: 12 kt, max: 32 kt", "propylene_sale: {min: 12 kt, max: unlimited"),
     ]
