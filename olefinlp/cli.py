@@ -49,7 +49,9 @@ def main(version: Annotated[bool, typer.Option("--version", help="Print the vers
 @app.command()
 def plan(
     scenario: ScenarioFile = None,
-    output: Annotated[Path | None, typer.Option("--output", "-o", help="Workbook to write. <scenario>_plan.xlsx if left out.")] = None,
+    output: Annotated[
+        Path | None, typer.Option("--output", "-o", help="Workbook to write. <scenario>_plan.xlsx if left out.")
+    ] = None,
     price_case: PriceCase = None,
     json_file: Annotated[
         str | None, typer.Option("--json", metavar="FILE", help="Also write the plan as JSON; - for standard output.")
@@ -209,7 +211,8 @@ def _no_plan_record(error: NoPlan) -> dict[str, Any]:
     record: dict[str, Any] = {"status": error.status.value, "message": str(error)}
     if error.clash:
         record["clash"] = [
-            {"month": c.month, "limit": c.text, "place": str(c.place or ""), "reason": c.reason} for c in error.clash.limits
+            [{"month": c.month, "limit": c.text, "place": str(c.place or ""), "reason": c.reason} for c in limits]
+            for limits in error.clash.sets
         ]
     return record
 

@@ -36,7 +36,7 @@ def audit_table(plan: Plan) -> Table:
         _row("solve", "simplex iterations", str(plan.solution.iterations), ""),
         _row("proof", "primal residual", f"{c.primal:.1e}", f"allowed {c.tolerance:.0e}, relative to each row's size"),
         _row("proof", "dual residual", f"{c.dual:.1e}", f"allowed {c.tolerance:.0e}, relative to each column's size"),
-        _row("proof", "complementary slackness", f"{c.complementarity:.1e}", f"allowed {c.tolerance:.0e}, relative to money moved"),
+        _row("proof", "complementarity", f"{c.complementarity:.1e}", f"allowed {c.tolerance:.0e}, relative to money moved"),
         _row("proof", "duality gap", f"{c.gap:.1e}", f"allowed {c.tolerance:.0e}, relative to money moved"),
         _row("proof", "loads, components and cuts again from the tables", f"{check_loads(plan.recomputed):.1e}", "allowed 1e-06"),
     ]

@@ -13,9 +13,9 @@ from dataclasses import dataclass
 from olefinlp.answers.quantities import Quantities
 from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.inputs.case import PER_THOUSAND
+from olefinlp.inputs.measures import MASS
 from olefinlp.inputs.plant import Mode, Plant
 from olefinlp.inputs.ratios import load_per_tonne, outlet_measure, utility_amount, utility_quantity
-from olefinlp.inputs.measures import MASS
 from olefinlp.inputs.units import share
 
 BALANCE_TOLERANCE = 1e-6
@@ -304,7 +304,7 @@ def _element(again: Recomputed, element: str, month: str) -> Iterator[Flow]:
         yield Flow(month, f"{element} in cracking", name, -1, (made - brought) * part, "kt")
 
 
-def closures(again: Recomputed, flows: list[Flow]) -> list[Closure]:
+def closures(flows: list[Flow]) -> list[Closure]:
     """How well each balance of each month closes."""
     result: list[Closure] = []
     sums: dict[tuple[str, str], list[Flow]] = {}
@@ -391,4 +391,3 @@ def closures_table(again: Recomputed, found: list[Closure]) -> Table:
             blank: Record = {column.key: None for column in columns}
             rows.append(blank | {"month": "", "balance": f"{element} in cracking", "closes": f"left out: {reason}"})
     return Table("closures", "Balance checks", columns, rows)
-

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from olefinlp.inputs.case import Case, Limit
 from olefinlp.inputs.findings import Place
-from olefinlp.lp.clash import Side, clashing_sides
+from olefinlp.lp.clash import MOST_SETS, Side, clashing_sets
 from olefinlp.lp.compile import LabelledLp
 from olefinlp.lp.solver import Outcome
 
@@ -23,31 +23,43 @@ class ClashingLimit:
 
 @dataclass(frozen=True)
 class Clash:
-    """Limits that cannot all be met; leaving out any one of them would make them possible."""
+    """Sets of limits that cannot all be met; in each, leaving out any one makes the rest possible."""
 
-    limits: tuple[ClashingLimit, ...]
+    sets: tuple[tuple[ClashingLimit, ...], ...]
 
     def __str__(self) -> str:
-        if not self.limits:
+        if not self.sets:
             return (
                 "No plan is possible, and no written limit is the cause: some material has no way out or in\n"
                 "hint: look for a cut whose outlets are all closed, or a utility that nothing makes"
             )
-        if len(self.limits) == 1:
-            head = "No plan is possible: this limit cannot be met"
-        else:
-            head = "No plan is possible: these limits clash"
-        width = max(len(limit.text) for limit in self.limits)
-        lines = [f"  {limit.text:<{width}}  {limit.place or ''}".rstrip() for limit in self.limits]
-        reasons = [f"  ({limit.text}: {limit.reason})" for limit in self.limits if limit.reason]
-        return "\n".join([head, *lines, *reasons, "hint: relax any one of them; every other limit can be kept"])
+        width = max(len(limit.text) for limits in self.sets for limit in limits)
+        lines: list[str] = []
+        for position, limits in enumerate(self.sets):
+            lines.append(_headline(position, len(limits)))
+            lines += [f"  {limit.text:<{width}}  {limit.place or ''}{_because(limit)}".rstrip() for limit in limits]
+        if len(self.sets) == MOST_SETS:
+            return "\n".join([*lines, "hint: relax one of each set, as little as is needed; more limits may clash beyond these"])
+        word = "one of them" if len(self.sets) == 1 else "one of each set"
+        return "\n".join([*lines, f"hint: relax {word}, as little as is needed; no other limit need be touched"])
 
 
-def find_clash(case: Case, lp: LabelledLp, outcome: Outcome) -> Clash:
-    """The clash of an impossible scenario."""
-    sides = clashing_sides(lp, outcome)
+def _because(limit: ClashingLimit) -> str:
+    return f"  ({limit.reason})" if limit.reason else ""
+
+
+def _headline(position: int, size: int) -> str:
+    start = "No plan is possible: " if position == 0 else "and apart from that, "
+    return start + ("this limit cannot be met" if size == 1 else "these limits clash")
+
+
+def find_clash(case: Case, lp: LabelledLp) -> Clash | None:
+    """The clash of an impossible scenario; None when nothing clashes after all."""
     many = len(case.months) > 1
-    return Clash(tuple(_in_words(case.limits[_key(lp, side)], side, many) for side in sides))
+    sets = clashing_sets(lp)
+    if sets is None:
+        return None
+    return Clash(tuple(tuple(_in_words(case.limits[_key(lp, side)], side, many) for side in sides) for sides in sets))
 
 
 def _key(lp: LabelledLp, side: Side) -> tuple[str, ...]:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from olefinlp.answers.quantities import Quantities
 from olefinlp.answers.tables import Column, Record, Table
-from olefinlp.inputs.case import PLAN_UNITS, PER_THOUSAND
+from olefinlp.inputs.case import PER_THOUSAND, PLAN_UNITS
 
 SALES = "sales"
 CONTENT = "content value"
@@ -85,7 +85,9 @@ def _month_lines(q: Quantities, month: str) -> Iterator[MoneyLine]:
             yield MoneyLine(month, END_VALUE, stocked, q.stock(stocked, month), "kt", stock.end_value, unit, "", 1, 1.0)
 
 
-def _line(q: Quantities, month: str, group: str, item: str, quantity: float, price_item: str, sign: int, share: float = 1.0) -> MoneyLine:
+def _line(
+    q: Quantities, month: str, group: str, item: str, quantity: float, price_item: str, sign: int, share: float = 1.0
+) -> MoneyLine:
     price = q.case.prices[price_item, month]
     per = price.unit_used.partition("/")[2]
     factor = share * (1.0 if per else PER_THOUSAND)

@@ -146,7 +146,7 @@ class Plan:
     @functools.cached_property
     def closures(self) -> Table:
         """How well each balance closes."""
-        return closures_table(self.recomputed, closures(self.recomputed, self._flows))
+        return closures_table(self.recomputed, closures(self._flows))
 
     @functools.cached_property
     def money(self) -> Table:
@@ -192,7 +192,8 @@ class Plan:
 
     def file_hashes(self) -> dict[str, str]:
         """SHA-256 of every input file, by the path a person would type."""
-        return {shown(name): hashlib.sha256(Path(name).read_bytes()).hexdigest() for name in self.scenario.files if Path(name).exists()}
+        files = [Path(name) for name in self.scenario.files]
+        return {shown(file): hashlib.sha256(file.read_bytes()).hexdigest() for file in files if file.exists()}
 
 
 def make_plan(scenario: Scenario) -> Plan:
@@ -219,7 +220,7 @@ def plan_of(scenario: Scenario, lp: LabelledLp, solution: Solution) -> Plan:
     certificate = prove(lp, solution)
     q = Quantities(scenario.case, lp, solution)
     again = Recomputed(q)
-    found = closures(again, balance_flows(again))
+    found = closures(balance_flows(again))
     prove_balances(again, found)
     lines = money_lines(q)
     _prove_money(lines, solution)
@@ -250,7 +251,9 @@ def _no_plan(case: Case, solver: Solver, outcome: Outcome) -> NoPlan:
     from olefinlp.answers.clash import endless, find_clash
 
     if outcome.status is Status.INFEASIBLE:
-        clash = find_clash(case, solver.lp, outcome)
+        clash = find_clash(case, solver.lp)
+        if clash is None:
+            return NoPlan("the solver finds no plan, but no limit stands in the way: its verdict is not believed", Status.FAILED)
         return NoPlan(str(clash), outcome.status, clash)
     if outcome.status is Status.UNBOUNDED:
         return NoPlan(endless(case, solver.lp, outcome), outcome.status)

@@ -327,6 +327,10 @@ class Reader:
         """Put a number on the list of inputs as used."""
         self.case.inputs.append(InputUsed(item, month, written, value, unit, place, note))
 
+    def _section(self, family: str, name: str) -> str:
+        """The part of the files in which the limits of a family are written."""
+        return self.case.sources[name].kind if family == "purchase" else SECTIONS.get(family, family)
+
     def limit(
         self,
         family: str,
@@ -350,13 +354,14 @@ class Reader:
         if low is not None and high is not None and low > high:
             place = places[0] or places[1] or Place("")
             text = f"{label}: the minimum {low * scale:g} {unit} is above the maximum {high * scale:g} {unit}"
-            self.findings.error(place, ".".join(key), text)
+            self.findings.error(place, f"{self._section(family, key[0])}.{key[0]}", text)
         worth_unit, worth_scale = worth or (unit.removeprefix("k"), 1.0)
         self.case.limits[family, *key] = Limit(
             family, key, label, low, high, unit, scale, worth_unit, worth_scale, month, places[0], places[1], reason, measure
         )
 
 
+SECTIONS = {"outlet": "outlets", "trade": "utilities", "stock": "stocks", "named": "limits"}
 ZERO_LIMITS = ("specification", "ratio")
 
 

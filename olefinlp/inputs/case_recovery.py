@@ -100,9 +100,9 @@ def read_units(reader: Reader) -> None:
             reader.note(f"modes.{mode.name}.load.{unit}", "", quantity.text, value, "per t", mode.place)
             parts[unit].append(Part("charge", (mode.name,), value))
     case.unit_parts = {unit: tuple(terms) for unit, terms in parts.items()}
-    for unit in plant.units.values():
+    for data in plant.units.values():
         for period in reader.scenario.periods:
-            _read_capacity(reader, unit, period)
+            _read_capacity(reader, data, period)
 
 
 def _read_capacity(reader: Reader, unit: RecoveryUnit, period: Period) -> None:

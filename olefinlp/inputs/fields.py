@@ -15,6 +15,7 @@ from olefinlp.inputs.units import Quantity, UnitError, parse_quantity
 T = TypeVar("T")
 NAME = r"^[A-Za-z][A-Za-z0-9_]*$"
 UNLIMITED = "unlimited"
+RELATIVE = frozenset(("of", "times", "plus", "freight"))
 
 
 class FileModel(BaseModel):
@@ -122,7 +123,7 @@ def to_price(value: Any) -> PriceWritten:
         return value
     if not isinstance(value, dict):
         return PriceWritten(to_quantity(value))
-    unknown = set(value) - {"of", "times", "plus", "freight"}
+    unknown = set(value) - RELATIVE
     if unknown:
         raise refuse(f"unknown name `{sorted(unknown)[0]}`; a relative price takes: of, times, plus, freight")
     if not isinstance(value.get("of"), str):
@@ -142,7 +143,7 @@ def monthly(read: Callable[[Any], T]) -> Callable[[Any], Monthly[T]]:
     def reader(value: Any) -> Monthly[T]:
         if isinstance(value, Monthly):
             return value
-        if not isinstance(value, dict) or "of" in value:
+        if not isinstance(value, dict) or not RELATIVE.isdisjoint(value):
             return Monthly(read(value))
         rest = read(value["other_months"]) if "other_months" in value else None
         by_month = tuple((str(month), read(v)) for month, v in value.items() if month != "other_months")

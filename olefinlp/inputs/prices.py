@@ -161,8 +161,10 @@ class PriceBook:
             return None
         if item.written is not None:
             price = item.written.at(month)
+            self._check_months(item, item.written)
             if price is None:
-                self.findings.error(self._place(item), item.item, f"has no price for {month}", "add it, or `other_months:`")
+                message = f"has no {item.path[-1]} for {month}"
+                self.findings.error(self._place(item), item.item, message, "add it, or `other_months:`")
                 return None
             return _Written(price, item.basis, "", self._place(item))
         row = rows.get(month) or rows.get("")
@@ -173,6 +175,13 @@ class PriceBook:
             self.findings.error(self._place(item), item.item, f"has no {word}", f"write {where}")
             return None
         return self._from_row(item, row)
+
+    def _check_months(self, item: PriceItem, written: Monthly[PriceWritten]) -> None:
+        months = [period.name for period in self.scenario.periods]
+        for month, _ in written.by_month:
+            if month not in months and not re.fullmatch(MONTH, month):
+                hint = near_name(month, [*months, "other_months"])
+                self.findings.error(self._place(item), item.item, f"`{month}` is not a month", hint)
 
     def _from_row(self, item: PriceItem, row: Row) -> _Written | None:
         case = str(self.scenario.file.price_case)
@@ -224,7 +233,7 @@ class PriceBook:
         if item.measure is ANY:
             unit = base.unit_used
         if base.unit_used != unit:
-            raise UnitError(f"is per {unit}, but `{name}` is {base.unit_used}")
+            raise UnitError(f"is in {unit}, but `{name}` is in {base.unit_used}")
         plus = sum(
             quantity.number * self._factor(item, quantity, period)[0] for quantity in (price.plus, price.freight) if quantity
         )

@@ -161,7 +161,10 @@ def _scenario(path: Path, document: Document, plant: Plant | None, findings: Fin
     if file is None or plant is None or (file.prices and table is None):
         return None
     periods = _periods(file, document, findings)
+    before = len(findings.errors)
     rates = _rates(file, document, findings)
+    if len(findings.errors) > before:
+        return None  # else every price in that money would be a finding of its own
     scenario = Scenario(path, document, file, plant, periods, table, rates)
     case = build_case(scenario, findings)
     if case is None or findings.errors:
@@ -223,5 +226,6 @@ def _rates(file: ScenarioFile, document: Document, findings: Findings) -> dict[s
             findings.error(place, name, str(error), f"write what one {code} is worth: `{code}: 1.08 {file.currency}`")
             continue
         if rates[code] <= 0:
+            del rates[code]
             findings.error(place, name, "an exchange rate must be above zero")
     return rates

@@ -21,6 +21,7 @@ from olefinlp.inputs.fields import (
     RatioLimit,
     Text,
     refuse,
+    to_quantity,
 )
 
 
@@ -147,6 +148,19 @@ class EndValue(FileModel):
     value: OneQuantity
 
 
+def _as_end(value: Any) -> Any:
+    if value == "at least opening" or isinstance(value, (EndAtLeast, EndValue)):
+        return value
+    if isinstance(value, dict) and set(value) == {"at_least"}:
+        return EndAtLeast(at_least=to_quantity(value["at_least"]))
+    if isinstance(value, dict) and set(value) == {"value"}:
+        return EndValue(value=to_quantity(value["value"]))
+    raise refuse("is no end rule", "write `at least opening`, `{at_least: 10 kt}` or `{value: 500 USD/t}`")
+
+
+EndRule = Annotated[Literal["at least opening"] | EndAtLeast | EndValue, BeforeValidator(_as_end)]
+
+
 class Stock(FileModel):
     """A tank of a feed or cut."""
 
@@ -156,7 +170,7 @@ class Stock(FileModel):
     holding: MonthlyPrice | None = Field(
         None, description="cost of a tonne held to the end of a month; may stand in the price table instead"
     )
-    end: Literal["at least opening"] | EndAtLeast | EndValue = Field(description="what the last closing stock must be or is worth")
+    end: EndRule = Field(description="what the last closing stock must be or is worth")
     quality: dict[Name, float] = Field(default_factory=dict, description="properties of the opening stock")
     note: Text | None = None
 

@@ -21,6 +21,8 @@ def validate(document: Document, model: type[M], findings: Findings) -> M | None
     except ValidationError as error:
         seen: dict[Path_, list[tuple[str, str]]] = {}
         for item in error.errors(include_url=False, include_input=True):
+            if item["type"] == "too_short" and item["input"]:
+                continue  # entries are there, but wrong: each has its own finding
             path = _written_path(document, item["loc"])
             if item["type"] in ("missing", "extra_forbidden"):
                 path = (*_written_path(document, item["loc"][:-1]), item["loc"][-1])
@@ -37,9 +39,11 @@ def validate(document: Document, model: type[M], findings: Findings) -> M | None
 def _written_path(document: Document, loc: tuple[str | int, ...]) -> Path_:
     """The part of pydantic's location that is written in the file (union branches left out)."""
     path: Path_ = ()
+    here: Any = document.data
     for part in loc:
-        if (*path, part) in document.lines:
-            path = (*path, part)
+        inside = part in here if isinstance(here, dict) else isinstance(here, list) and part in range(len(here))
+        if inside:
+            path, here = (*path, part), here[part]
     return path
 
 
@@ -69,11 +73,22 @@ def _message(item: dict[str, Any], path: Path_, document: Document, root: type[B
         return f"`{item.get('input')}` is not a whole number", ""
     if kind in ("float_type", "float_parsing"):
         return f"`{item.get('input')}` is not a number", "write a number without a unit"
+    if kind in _BOUNDS:
+        words, bound = _BOUNDS[kind]
+        return f"`{item.get('input')}` must be {words} {context[bound]:g}", ""
     if kind == "string_type":
         return "a text is needed here", ""
     if kind == "string_pattern_mismatch":
         return f"`{item.get('input')}` is not an ISO currency code", "three capital letters, for example USD"
     return str(item["msg"])[:1].lower() + str(item["msg"])[1:], ""
+
+
+_BOUNDS = {
+    "greater_than": ("above", "gt"),
+    "greater_than_equal": ("at least", "ge"),
+    "less_than": ("below", "lt"),
+    "less_than_equal": ("at most", "le"),
+}
 
 
 def _field_names(model: type[BaseModel] | None) -> list[str]:

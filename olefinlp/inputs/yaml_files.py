@@ -162,13 +162,14 @@ class _Reader:
         if kind == "null":
             return None
         if kind == "bool":
-            return text.lower() == "true"
-        if kind in ("int", "float"):
+            # A file may call itself YAML 1.1, where `no` is false: here only `true` and `false` are.
+            return {"true": True, "false": False}.get(text.lower(), text)
+        if kind in ("int", "float") and "_" not in text:
             try:
                 return int(text, 10) if kind == "int" else float(text)
             except ValueError:
                 return text
-        if kind not in ("str", "timestamp"):
+        if kind not in ("str", "timestamp", "int", "float"):
             self._error(node, path, f"the tag `{node.tag}` is not allowed")
             self.broken = True
         return text

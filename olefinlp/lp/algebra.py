@@ -21,7 +21,7 @@ from pyomo.common.gc_manager import PauseGC
 from olefinlp.inputs.case import Case, Part
 
 TEXTS = {
-    "feed_balance": "kt | Of each feed (each delivery quality apart) and month: charged + closing stock = bought + opening stock.",
+    "feed_balance": "kt | Of each feed (each quality apart) and month: charged + closing stock = bought + opening stock.",
     "purchase_limit": "kt | What is bought from a source stays between its minimum and maximum.",
     "take_or_pay_limit": "kt | Bought plus the shortfall paid for is at least the take-or-pay quantity.",
     "furnace_hours_limit": "h | Charge times hours per tonne (decokes inside) fits into the hours of the furnace group.",
@@ -75,7 +75,7 @@ def declare_variables(m: Any, case: Case) -> None:
     months = case.months
     tiers = [(s, k, t) for s, data in case.sources.items() for k in data.tiers for t in months]
     sales = [(o, k, t) for o, steps in case.sale_tiers.items() for k in steps for t in months]
-    m.bought = pyo.Var(tiers, bounds=lambda m, s, k, t: (0, _finite(case.tier_size[s, k, t])))
+    m.bought = pyo.Var(tiers, bounds=lambda _, s, k, t: (0, _finite(case.tier_size[s, k, t])))
     m.shortfall = pyo.Var(
         [(s, t) for s, data in case.sources.items() if data.take_or_pay for t in months], within=pyo.NonNegativeReals
     )
@@ -85,7 +85,7 @@ def declare_variables(m: Any, case: Case) -> None:
     m.cut_made = pyo.Var(case.cuts, months)
     dispositions = [(o, k, t) for o, cuts in case.outlets.items() for k in cuts for t in months]
     m.disposition = pyo.Var(dispositions, within=pyo.NonNegativeReals)
-    m.sold = pyo.Var(sales, bounds=lambda m, o, k, t: (0, _finite(case.sale_size[o, k, t])))
+    m.sold = pyo.Var(sales, bounds=lambda _, o, k, t: (0, _finite(case.sale_size[o, k, t])))
     m.unit_load = pyo.Var(case.units, months)
     m.trade = pyo.Var(list(case.trades), months, within=pyo.NonNegativeReals)
     m.conversion = pyo.Var(list(case.conversions), months, within=pyo.NonNegativeReals)
@@ -129,7 +129,7 @@ def buy(m: Any, case: Case) -> None:
         if parcel not in stocked:
             return row(m, 0, charged - bought, 0)
         opening, closing = _opening(m, case, parcel, t), m.closing_stock[parcel, t]
-        return _stock_row(case, parcel, t, charged + closing - bought, opening)
+        return _stock_row(case, parcel, charged + closing - bought, opening)
 
     m.feed_balance = pyo.Constraint(lines, rule=feed_balance)
 
@@ -139,7 +139,7 @@ def _opening(m: Any, case: Case, line: str, t: str) -> Any:
     return None if before is None else m.closing_stock[line, before]
 
 
-def _stock_row(case: Case, line: str, t: str, uses: Any, opening: Any) -> Any:
+def _stock_row(case: Case, line: str, uses: Any, opening: Any) -> Any:
     """uses = opening stock: a number in the first month, last month's closing stock after."""
     if opening is None:
         there = case.opening.get(line, 0.0)
@@ -211,7 +211,7 @@ def dispose(m: Any, case: Case) -> None:
         if k not in case.stocks or case.stocks[k].is_feed:  # a feed and a cut may share a name
             return row(m, 0, to_outlets + charged - m.cut_made[k, t], 0)
         uses = to_outlets + charged + m.closing_stock[k, t] - m.cut_made[k, t]
-        return _stock_row(case, k, t, uses, _opening(m, case, k, t))
+        return _stock_row(case, k, uses, _opening(m, case, k, t))
 
     def heat_disposal(m: Any, k: str, t: str) -> Any:
         heat = sum(share * case.heating_values[c] * m.component_made[c, t] for c, share in case.recovery[k].items())
@@ -235,9 +235,7 @@ def use_utilities(m: Any, case: Case) -> None:
 
     def utility_balance(m: Any, u: str, t: str) -> Any:
         used_less_made = total(m, case, case.utilities[u], t)
-        used_less_made += sum(
-            amount * m.conversion[name, t] for name, flows in case.conversions.items() for util, amount in flows.items() if util == u
-        )
+        used_less_made += sum(flows[u] * m.conversion[name, t] for name, flows in case.conversions.items() if u in flows)
         out_less_in = sum(
             (-1 if kind == "imports" else 1) * m.trade[name, t] for name, (util, kind) in case.trades.items() if util == u
         )
@@ -295,22 +293,19 @@ def purchased(m: Any, case: Case, source: str, t: str) -> Any:
 
 def hours_used(m: Any, case: Case, group: str, t: str) -> Any:
     """Furnace-hours of a group: on feed and decoking (h)."""
-    return sum(case.hours_per_kt[mode] * m.charge[mode, p, month] for mode, p, month in _in(case, t) if case.mode_group[mode] == group)
+    modes = [charge for charge in case.charges_in[t] if case.mode_group[charge[0]] == group]
+    return sum(case.hours_per_kt[charge[0]] * m.charge[charge] for charge in modes)
 
 
 def decoke_hours(m: Any, case: Case, t: str) -> Any:
     """Hours of decoking, all groups (h)."""
-    return sum(case.decoke_hours_per_kt[mode] * m.charge[mode, p, month] for mode, p, month in _in(case, t))
+    return sum(case.decoke_hours_per_kt[charge[0]] * m.charge[charge] for charge in case.charges_in[t])
 
 
 def stock(m: Any, case: Case, item: str, t: str) -> Any:
     """What is in a tank at the end of a month, all parcels (kt)."""
     data = case.stocks[item]
     return sum(m.closing_stock[line, t] for line in (data.parcels if data.is_feed else (item,)))
-
-
-def _in(case: Case, t: str) -> list[tuple[str, str, str]]:
-    return case.charges_in[t]
 
 
 def total(m: Any, case: Case, parts: Iterable[Part], t: str) -> Any:
@@ -381,9 +376,7 @@ def traded(m: Any, case: Case, t: str) -> Any:
 
 def purchases(m: Any, case: Case, t: str) -> Any:
     """Feeds and side streams bought, step by step."""
-    return sum(
-        case.rate(case.purchase_item(s, k), t) * m.bought[s, k, t] for s, data in case.sources.items() for k in data.tiers
-    )
+    return sum(case.rate(case.purchase_item(s, k), t) * m.bought[s, k, t] for s, data in case.sources.items() for k in data.tiers)
 
 
 def shortfall_payments(m: Any, case: Case, t: str) -> Any:

@@ -51,7 +51,7 @@ class LabelledLp:
     def gathered(self, y: Floats) -> Floats:
         """Aᵀ y, by column."""
         weights = self.value * np.repeat(y, np.diff(self.starts))
-        return np.bincount(self.index, weights=weights, minlength=len(self.columns))
+        return np.bincount(self.index, weights=weights, minlength=len(self.columns)).astype(float)
 
     def sizes(self, x: Floats) -> Floats:
         """Σ |a x| of each row: the size that its residual is compared with."""

@@ -134,12 +134,13 @@ class Solver:
     def solve(self) -> Outcome:
         """Solve; a verdict of no plan is repeated once without presolve before it is believed."""
         outcome = self._run()
-        if outcome.status in (Status.INFEASIBLE, Status.FAILED):
-            self.highs.setOptionValue("presolve", "off")
-            self.highs.clearSolver()
-            outcome = self._run()
-            self.highs.setOptionValue("presolve", "choose")
-        return outcome
+        if outcome.status not in (Status.INFEASIBLE, Status.FAILED):
+            return outcome
+        self.highs.setOptionValue("presolve", "off")
+        self.highs.clearSolver()
+        again = self._run()
+        self.highs.setOptionValue("presolve", "choose")
+        return outcome if again.status is Status.FAILED else again
 
     def _run(self) -> Outcome:
         with _no_banner():

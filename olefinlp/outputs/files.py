@@ -67,4 +67,8 @@ def _words(target: Path, error: OSError) -> str:
 
 def write_text(path: str | os.PathLike[str], text: str) -> Path:
     """Write a UTF-8 text file, whole or not at all."""
-    return write_whole(path, lambda temporary: temporary.write_text(text, encoding="utf-8", newline="\n") and None)
+
+    def write(temporary: Path) -> None:
+        temporary.write_text(text, encoding="utf-8", newline="\n")
+
+    return write_whole(path, write)

@@ -5,10 +5,12 @@ from __future__ import annotations
 import json
 from typing import Any
 
+from pydantic import BaseModel
+
 from olefinlp.inputs.plant_file import PlantFile
 from olefinlp.inputs.scenario_file import ScenarioFile
 
-MODELS = {"scenario": ScenarioFile, "plant": PlantFile}
+MODELS: dict[str, type[BaseModel]] = {"scenario": ScenarioFile, "plant": PlantFile}
 
 
 def schema_of(what: str) -> dict[str, Any]:

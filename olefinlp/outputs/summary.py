@@ -84,7 +84,7 @@ def _left_unit(rows: list[list[str]]) -> list[str]:
             cell.ljust(width) if i in (0, len(row) - 1) else cell.rjust(width)
             for i, (cell, width) in enumerate(zip(row, widths, strict=True))
         ]
-        lines.append(("" if position == 0 else INDENT) + "  ".join(cells) if position else "  ".join([cells[0] + INDENT, *cells[1:]]))
+        lines.append(INDENT + "  ".join(cells) if position else "  ".join([cells[0] + INDENT, *cells[1:]]))
     return lines
 
 
@@ -127,7 +127,9 @@ def _feeds(plan: Plan) -> list[str]:
             rows.append([INDENT + _source(row), number(row["bought"] * size), row["price_written"], number(row["price"])])
             rows[-1] += [number(row["worth"]), _at(row)]
     lines = [line.removeprefix(INDENT) for line in _state_left(rows)]
-    idle = [f"{_source(row)} {number(row['price'])} (worth {number(row['worth'])})" for row in plan.feeds.rows if not row["bought"]]
+    idle = [
+        f"{_source(row)} {number(row['price'])} (worth {number(row['worth'])})" for row in plan.feeds.rows if not row["bought"]
+    ]
     return [*lines, f"{INDENT}not bought, {money}: {'; '.join(idle)}"] if idle else lines
 
 
@@ -187,7 +189,8 @@ def _slate(plan: Plan) -> list[str]:
         lines = []
         for of, factor, words in (("kt", size, unit), ("TJ LHV", 1.0, "TJ LHV")):
             sums = _totals(plan.slate.where(unit=of), ("outlet",), "quantity")
-            lines += _by_month(plan, f"Products sold, {words}", sums, factor) if any(any(v.values()) for v in sums.values()) else []
+            if any(any(values.values()) for values in sums.values()):
+                lines += _by_month(plan, f"Products sold, {words}", sums, factor)
         return lines
     rows = [["Products sold", "", "", "price", "", "revenue", ""]]
     money, scale = ("k" + plan.currency, 1.0) if abs(plan.margin) >= 1e6 else (plan.currency, 1000.0)

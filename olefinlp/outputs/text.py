@@ -43,7 +43,8 @@ def aligned(rows: Sequence[Sequence[str]], left: int = 1) -> list[str]:
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
     lines = []
     for row in rows:
-        cells = [cell.ljust(width) if i < left else cell.rjust(width) for i, (cell, width) in enumerate(zip(row, widths, strict=True))]
+        sized = enumerate(zip(row, widths, strict=True))
+        cells = [cell.ljust(width) if i < left else cell.rjust(width) for i, (cell, width) in sized]
         lines.append((INDENT + "  ".join(cells)).rstrip())
     return lines
 
