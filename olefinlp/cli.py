@@ -6,7 +6,9 @@ standard output, everything else to standard error.
 
 from __future__ import annotations
 
+import os
 import sys
+from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any, NoReturn
 
@@ -36,8 +38,11 @@ PriceCase = Annotated[str | None, typer.Option(help="Another price case of the s
 @app.callback(invoke_without_command=True)
 def main(version: Annotated[bool, typer.Option("--version", help="Print the version and stop.")] = False) -> None:
     """Make sure that any terminal can show what is printed; print the version if asked."""
-    for stream in (sys.stdout, sys.stderr):
-        if hasattr(stream, "reconfigure"):
+    for name in ("stdout", "stderr"):
+        stream = getattr(sys, name)
+        if stream is None:  # a scheduled job may have neither
+            setattr(sys, name, open(os.devnull, "w", encoding="utf-8"))
+        elif hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")
     if version:
         from olefinlp import __version__
@@ -62,8 +67,7 @@ def plan(
     """Make the best plan, prove it, print a summary and write a workbook."""
     import pyomo.environ  # noqa: F401  # first: it is three times slower to load after scipy
 
-    from olefinlp.outputs import write_csv, write_workbook
-    from olefinlp.outputs.files import OutputError
+    from olefinlp.outputs import write_csv, write_json, write_workbook
     from olefinlp.outputs.records import plan_json
     from olefinlp.outputs.summary import summary
 
@@ -72,22 +76,15 @@ def plan(
         _note(f"no scenario given: planning the invented demo, {_shown(path)}")
     made = _make_plan(path, price_case, json_file)
     if json_file == "-":
-        typer.echo(plan_json(made), nl=False)
+        _data(plan_json(made))
     else:
         typer.echo(summary(made))
-    target = output or Path(f"{path.stem}_plan.xlsx")
-    try:
-        written = [write_workbook(made, target)]
-        if json_file and json_file != "-":
-            from olefinlp.outputs import write_json
-
-            written.append(write_json(made, json_file))
-        if csv_folder:
-            write_csv(made, csv_folder)
-            written.append(csv_folder)
-    except OutputError as error:
-        _stop(str(error), EXIT_OUTPUT)
-    _note("\nwritten: " + ", ".join(_shown(p) for p in written))
+    targets: list[tuple[Path, Callable[[Plan, Path], object]]] = [(output or Path(f"{path.stem}_plan.xlsx"), write_workbook)]
+    if json_file and json_file != "-":
+        targets.append((Path(json_file), write_json))
+    if csv_folder:
+        targets.append((csv_folder, write_csv))
+    _write_all(made, targets)
 
 
 @app.command()
@@ -157,13 +154,30 @@ def schema(
     except KeyError:
         _stop(f"`{what}` has no schema; known: scenario, plant", EXIT_INPUT)
     if output is None:
-        typer.echo(text, nl=False)
+        _data(text)
         return
     try:
         write_text(output, text)
     except OutputError as error:
         _stop(str(error), EXIT_OUTPUT)
     _note(f"written: {_shown(output)}")
+
+
+def _write_all(made: Plan, targets: list[tuple[Path, Callable[[Plan, Path], object]]]) -> None:
+    """Write each output; one that cannot be written does not hold back the others."""
+    from olefinlp.outputs.files import OutputError
+
+    written, failed = [], []
+    for target, write in targets:
+        try:
+            write(made, target)
+            written.append(_shown(target))
+        except OutputError as error:
+            failed.append(str(error))
+    if written:
+        _note(f"\nwritten: {', '.join(written)}")
+    if failed:
+        _stop("\n".join(failed), EXIT_OUTPUT)
 
 
 def _scenario_path(path: Path | None) -> Path:
@@ -197,7 +211,7 @@ def _make_plan(path: Path, price_case: str | None, json_file: str | None) -> Pla
         scenario = read_scenario(path)
         return make_plan(scenario.with_(price_case=price_case) if price_case else scenario)
     except InputError as error:
-        _failure_json(json_file, {"status": "input_error", "findings": [str(f) for f in error.findings]})
+        _failure_json(json_file, _input_record(error))
         _stop_on_input(error)
     except NoPlan as error:
         _failure_json(json_file, _no_plan_record(error))
@@ -205,6 +219,13 @@ def _make_plan(path: Path, price_case: str | None, json_file: str | None) -> Pla
     except (CertificateError, BalanceError) as error:
         _failure_json(json_file, {"status": "not_proven", "message": str(error)})
         _stop(f"{error}\nhint: this is a fault of the tool or of extreme numbers, not a plan; please report it", EXIT_FAILED)
+
+
+def _input_record(error: InputError) -> dict[str, Any]:
+    findings = [
+        {"level": f.level, "place": str(f.place), "path": f.path, "message": f.message, "hint": f.hint} for f in error.findings
+    ]
+    return {"status": "input_error", "message": str(error), "findings": findings}
 
 
 def _no_plan_record(error: NoPlan) -> dict[str, Any]:
@@ -227,7 +248,7 @@ def _failure_json(target: str | None, record: dict[str, Any]) -> None:
 
     text = json.dumps(record, indent=1, ensure_ascii=False) + "\n"
     if target == "-":
-        typer.echo(text, nl=False)
+        _data(text)
         return
     try:
         write_text(target, text)
@@ -255,6 +276,11 @@ def _count(number: int, word: str) -> str:
 def _stop(message: str, code: int) -> NoReturn:
     _note(message)
     raise typer.Exit(code)
+
+
+def _data(text: str) -> None:
+    """JSON is UTF-8, whatever the terminal."""
+    typer.echo(text.encode("utf-8"), nl=False)
 
 
 def _note(message: str) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import shutil
 from pathlib import Path
 
@@ -23,17 +24,34 @@ def default_scenario() -> Path:
 def copy_starter(folder: Path) -> list[Path]:
     """Copy the starter plants and scenarios into a folder; nothing that is there is replaced.
 
-    Raises `FileExistsError` naming the first file that is in the way, before anything is copied.
+    Raises `FileExistsError` naming the first file that is in the way, before anything is copied, and
+    another `OSError` when a file cannot be written; what was copied by then is taken away again.
     """
-    sources = [p for name in FOLDERS for p in sorted((starter_folder() / name).rglob("*")) if _is_data(p)]
-    targets = [folder / p.relative_to(starter_folder()) for p in sources]
+    start = starter_folder()
+    sources = [p for name in FOLDERS for p in sorted((start / name).rglob("*")) if _is_data(p)]
+    targets = [folder / p.relative_to(start) for p in sources]
     for target in targets:
-        if target.exists():
-            raise FileExistsError(str(target))
-    for source, target in zip(sources, targets, strict=True):
-        target.parent.mkdir(parents=True, exist_ok=True)
-        shutil.copyfile(source, target)
+        _refuse_what_is_there(target)
+    copied: list[Path] = []
+    try:
+        for source, target in zip(sources, targets, strict=True):
+            target.parent.mkdir(parents=True, exist_ok=True)
+            copied.append(target)
+            shutil.copyfile(source, target)
+    except OSError:
+        for target in copied:
+            target.unlink(missing_ok=True)
+        raise
     return targets
+
+
+def _refuse_what_is_there(target: Path) -> None:
+    """Raise `FileExistsError` for the target, or for a file that stands where a folder of it must be."""
+    if os.path.lexists(target):
+        raise FileExistsError(str(target))
+    for above in reversed(target.parents):
+        if os.path.lexists(above) and not above.is_dir():
+            raise FileExistsError(str(above))
 
 
 def _is_data(path: Path) -> bool:

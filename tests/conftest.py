@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-import os
 import sys
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from functools import cache
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -24,13 +23,7 @@ if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
     from olefinlp.inputs.scenario import Scenario
 
-SCENARIOS = (
-    "brackwater_2031_03.yaml",
-    "brackwater_2031_04.yaml",
-    "brackwater_2031_03_to_08.yaml",
-    "marram_point_2031_03.yaml",
-    "thermal_cracker.yaml",
-)
+SCENARIOS = tuple(sorted(path.name for path in (ROOT / "scenarios").glob("*.yaml")))
 
 settings.register_profile(
     "repeatable",
@@ -85,12 +78,3 @@ def every_plan(request: pytest.FixtureRequest) -> Plan:
 def march() -> Plan:
     """The plan of March 2031, the case most checks begin with."""
     return _plan("brackwater_2031_03.yaml")
-
-
-@pytest.fixture
-def at_root() -> Iterator[Path]:
-    """The repository's top folder as the working folder."""
-    before = Path.cwd()
-    os.chdir(ROOT)
-    yield ROOT
-    os.chdir(before)

@@ -44,6 +44,8 @@ PURITY = {"propylene": 0.995, "propane": 0.012}
 GRADE = 0.93
 CHEMICALS, DECOKE, TREATING = 5.0, 18_000.0, 22.0  # USD/t, USD each, USD/t
 FUEL_OIL_BURNT_MAX = 3.0  # kt a month
+Terms = dict[str, float]
+Row = tuple[str, Terms, float]
 OUTLETS_OF = {
     "hydrogen": ("hydrogen_sale", "hydrogen_burnt"),
     "ethylene": ("ethylene_contract", "ethylene_spot"),
@@ -56,23 +58,6 @@ OUTLETS_OF = {
     "fuel_oil": ("fuel_oil_sale", "fuel_oil_burnt"),
 }
 RECYCLE_OF = {"ethane": "recycle_ethane", "propane": "recycle_propane"}
-CONTENT = {
-    "crude_c4": {
-        "butadiene": ("butadiene",),
-        "isobutene": ("isobutene",),
-        "other_c4": ("n_butenes", "butanes", "propylene", "propane"),
-        "c5": ("c5_hydrocarbons",),
-    },
-    "pygas": {
-        "non_aromatics": ("c6_c8_non_aromatics",),
-        "benzene": ("benzene",),
-        "toluene": ("toluene",),
-        "c8_aromatics": ("c8_aromatics",),
-        "c9_c10": ("c9_c10_pygas",),
-        "c5": ("c5_hydrocarbons",),
-        "pyrolysis_oil": ("pyrolysis_oil",),
-    },
-}
 
 
 def table(path: Path) -> list[dict[str, str]]:
@@ -125,8 +110,8 @@ class Program:
         self.at: dict[str, int] = {}
         self.bounds: list[tuple[float, float]] = []
         self.worth: dict[str, float] = defaultdict(float)
-        self.equal: list[tuple[str, dict[str, float], float]] = []
-        self.most: list[tuple[str, dict[str, float], float]] = []
+        self.equal: list[Row] = []
+        self.most: list[Row] = []
 
     def column(self, name: str, high: float = np.inf, low: float = 0.0) -> str:
         self.at[name] = len(self.bounds)
@@ -149,7 +134,7 @@ class Program:
         rates = {name: -float(rate) for (name, _, _), rate in zip(most, found.ineqlin.marginals, strict=True)}
         return Answer(-float(found.fun), {name: float(found.x[j]) for name, j in self.at.items()}, rates)
 
-    def matrix(self, rows: list[tuple[str, dict[str, float], float]]) -> coo_matrix:
+    def matrix(self, rows: list[Row]) -> coo_matrix:
         cells = [(i, self.at[name], value) for i, (_, terms, _) in enumerate(rows) for name, value in terms.items()]
         i, j, value = zip(*cells, strict=True)
         return coo_matrix((value, (i, j)), shape=(len(rows), len(self.bounds)))
@@ -162,9 +147,9 @@ class Answer:
     rate: dict[str, float]
 
 
-def total(*parts: tuple[float, dict[str, float]]) -> dict[str, float]:
+def total(*parts: tuple[float, Terms]) -> Terms:
     """A sum of multiples of sums."""
-    terms: dict[str, float] = defaultdict(float)
+    terms: Terms = defaultdict(float)
     for factor, part in parts:
         for name, value in part.items():
             terms[name] += factor * value
@@ -194,16 +179,16 @@ class Route:
         for feed, tank in self.scenario.get("stocks", {}).items():
             self.at_least(f"end {feed}", {before[feed]: 1}, number(tank["opening"]))
 
-    def at_most(self, name: str, terms: dict[str, float], limit: float) -> None:
+    def at_most(self, name: str, terms: Terms, limit: float) -> None:
         self.lp.most.append((name, terms, limit))
 
-    def at_least(self, name: str, terms: dict[str, float], limit: float) -> None:
+    def at_least(self, name: str, terms: Terms, limit: float) -> None:
         self.lp.most.append((name, total((-1, terms)), -limit))
 
-    def equal(self, name: str, terms: dict[str, float], value: float = 0.0) -> None:
+    def equal(self, name: str, terms: Terms, value: float = 0.0) -> None:
         self.lp.equal.append((name, terms, value))
 
-    def earn(self, terms: dict[str, float], price: float) -> None:
+    def earn(self, terms: Terms, price: float) -> None:
         for name, value in terms.items():
             self.lp.worth[name] += price * value
 
@@ -223,7 +208,7 @@ class Route:
         )
         cut = {k: total(*((float(r[k]), made[c]) for c, r in self.recovery.items())) for k in (*OUTLETS_OF, "tail_gas")}
         out = self.outlets(cut)
-        load = self.unit_loads(made, cut, charged, out)
+        load = self.unit_loads(made, cut, out)
         self.content(made)
         self.energy(made, charged, out, load)
         return closing
@@ -259,7 +244,7 @@ class Route:
         return closing
 
     def furnaces(self) -> None:
-        decoking: dict[str, float] = {}
+        decoking: Terms = {}
         for m, x in zip(self.modes, self.charge, strict=True):
             rate, run = float(m["charge"]), 24 * float(m["run_length"])
             decoking[x] = 1000 / rate * float(m["decoke"]) / run
@@ -275,12 +260,12 @@ class Route:
             self.at_most(f"{self.t} {group}", used, there)
         self.at_most(f"{self.t} decoke crew", decoking, self.plant["decoke_crews"]["crews"] * self.hours)
 
-    def components(self) -> dict[str, dict[str, float]]:
+    def components(self) -> dict[str, Terms]:
         kept = (1 - LOSS) / 100
         rows = [self.yields[m["feed"], m["severity"]] for m in self.modes]
         return {c: {x: kept * float(row[c]) for x, row in zip(self.charge, rows, strict=True)} for c in self.parts}
 
-    def outlets(self, cut: dict[str, dict[str, float]]) -> dict[str, str]:
+    def outlets(self, cut: dict[str, Terms]) -> dict[str, str]:
         """Every cut leaves in full; two of them also go round again."""
         t, written = self.t, self.scenario["outlets"]
         out = {name: self.lp.column(f"{t} {name}") for names in OUTLETS_OF.values() for name in names}
@@ -312,25 +297,25 @@ class Route:
         self.earn(sold["hydrotreated_pygas"], -TREATING)
         return out
 
-    def unit_loads(
-        self, made: dict[str, dict[str, float]], cut: dict[str, dict[str, float]], charged: dict[str, float], out: dict[str, str]
-    ) -> dict[str, dict[str, float]]:
-        load: dict[str, dict[str, float]] = {}
+    def unit_loads(self, made: dict[str, Terms], cut: dict[str, Terms], out: dict[str, str]) -> dict[str, Terms]:
+        load: dict[str, Terms] = {}
         for row in self.units:
             unit = row["unit"]
-            terms = [total((1, charged))] and [(0.0, charged)]
+            terms: list[tuple[float, Terms]] = []
             for item in (one for one in self.loads if one["unit"] == unit):
-                what = {
-                    "component": lambda name: made[name],
-                    "cut": lambda name: cut[name],
-                    "outlet": lambda name: {out[name]: 1.0},
-                    "ingredient": lambda name: {out["{1}_in_{0}".format(*name.replace("_propylene.", ".").split("."))]: 1.0},
-                }[item["of"]](item["item"])
+                name = item["item"]
+                if item["of"] == "ingredient":
+                    outlet, k = name.split(".")
+                    what = {out[f"{k}_in_{outlet.removesuffix('_propylene')}"]: 1.0}
+                else:
+                    what = made[name] if item["of"] == "component" else cut[name] if item["of"] == "cut" else {out[name]: 1.0}
                 terms.append((float(item["load"]), what))
             if unit == "dilution_steam_generation":
                 column = "load dilution_steam_generation"
                 terms.append((1.0, {x: float(m[column]) for m, x in zip(self.modes, self.charge, strict=True)}))
-            factors = [one["factor"] for one in self.scenario.get("unit_factors", []) if (one["month"], one["unit"]) == (self.t, unit)]
+            factors = [
+                one["factor"] for one in self.scenario.get("unit_factors", []) if (one["month"], one["unit"]) == (self.t, unit)
+            ]
             most = float(row["capacity"]) * float(np.prod(factors)) * self.hours / 1000
             load[unit] = total(*terms)
             self.at_most(f"{self.t} {unit}", load[unit], most)
@@ -338,19 +323,13 @@ class Route:
                 self.at_least(f"{self.t} {unit} min", load[unit], most * float(row["min_load"]) / 100)
         return load
 
-    def content(self, made: dict[str, dict[str, float]]) -> None:
-        for k, items in CONTENT.items():
-            for item, names in items.items():
+    def content(self, made: dict[str, Terms]) -> None:
+        for k in ("crude_c4", "pygas"):
+            for item, names in self.plant["cuts"][k]["content_items"].items():
                 for c in names:
                     self.earn(made[c], float(self.recovery[c][k]) * self.price[f"contents.{k}.{item}"])
 
-    def energy(
-        self,
-        made: dict[str, dict[str, float]],
-        charged: dict[str, float],
-        out: dict[str, str],
-        load: dict[str, dict[str, float]],
-    ) -> None:
+    def energy(self, made: dict[str, Terms], charged: Terms, out: dict[str, str], load: dict[str, Terms]) -> None:
         """Tail gas as heat, fuel, steam and CO2."""
         t, gas_price = self.t, self.price["utilities.natural_gas"]
         burnt, flared = self.lp.column(f"{t} tail_gas_burnt"), self.lp.column(f"{t} tail_gas_flared")
@@ -364,7 +343,9 @@ class Route:
         fired = {x: float(m["fired_heat"]) for m, x in zip(self.modes, self.charge, strict=True)}
         self.equal(f"{t} fuel", total((1, fired), (BOILER_FUEL, {steam: 1}), (-1, fuels)))
         raised = {x: float(m["makes high_pressure_steam"]) for m, x in zip(self.modes, self.charge, strict=True)}
-        turbines = total((COMPRESSOR_STEAM, load["cracked_gas_compressor"]), (REFRIGERATION_STEAM, load["propylene_refrigeration"]))
+        turbines = total(
+            (COMPRESSOR_STEAM, load["cracked_gas_compressor"]), (REFRIGERATION_STEAM, load["propylene_refrigeration"])
+        )
         made_steam = total((1, raised), (-PROCESS_STEAM, charged), (1, {steam: 1, surplus: -1}))
         self.equal(f"{t} steam", total((1, turbines), (-1, made_steam)))
         co2 = total(

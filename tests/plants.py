@@ -14,11 +14,15 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+import pytest
 from ruamel.yaml import YAML
 
 from olefinlp.answers.plan import Plan, make_plan
 from olefinlp.inputs.scenario import Scenario, read_scenario
+from olefinlp.lp.compile import LabelledLp
 
+EXACT = 1e-9
 SOURCE = "assumed: small plant of a test"
 Table = str | list[dict[str, Any]]
 Written = str | Mapping[str, Any]
@@ -39,6 +43,12 @@ TEXTS = {
 ALWAYS = {
     "modes": ("group", "feed", "severity", "coil_outlet", "charge", "run_length", "decoke", "fired_heat"),
     "recovery_units": ("unit", "capacity", "capacity_unit", "measure", "min_load"),
+}
+
+ONE_FEED = {
+    "yields": "feed, severity, ethylene, residue\nnaphtha, base, 40, 60",
+    "modes": "group, feed, severity, charge\nfurnaces, naphtha, base, 10",
+    "prices": {"ethylene": 1200, "residue": 200},
 }
 
 
@@ -109,7 +119,9 @@ def small_plant(tables: dict[str, list[dict[str, Any]]], changes: Mapping[str, A
     sales = {f"{cut}_sale": {"from": cut, "to": "sale"} for cut in plant["cuts"] if cut not in recycled | taken}
     plant["outlets"] = {**sales, **plant.get("outlets", {})}
     sourced = [plant["loss"], plant["decoke_crews"]]
-    sourced += [one for kind in ("feeds", "side_streams", "furnace_groups", "conversions") for one in plant.get(kind, {}).values()]
+    sourced += [
+        one for kind in ("feeds", "side_streams", "furnace_groups", "conversions") for one in plant.get(kind, {}).values()
+    ]
     for one in sourced:
         one.setdefault("source", SOURCE)
     assert components
@@ -190,3 +202,54 @@ def identity_of_duality(plan: Plan) -> float:
         side = high if dual > 0 else low
         worth += dual * side if math.isfinite(side) else 0.0
     return worth
+
+
+def near(value: float) -> Any:
+    """Equal but for rounding of floating point numbers."""
+    return pytest.approx(value, rel=EXACT, abs=EXACT)
+
+
+def margin_is(plan: Plan, thousands: float) -> None:
+    """The margin, that the certificate holds, and that what the limits earn is the margin."""
+    assert plan.margin / 1000 == near(thousands)
+    assert plan.certificate.holds
+    assert identity_of_duality(plan) == near(thousands)
+
+
+def bought(plan: Plan, source: str, month: str = "month") -> float:
+    """Bought from a source, kt."""
+    return plan.quantities.bought(source, month)
+
+
+def worth_and_rate(plan: Plan, family: str, name: str = "", month: str | None = None) -> tuple[float, float, str]:
+    """Worth, rate and their unit of one limit."""
+    row = limit(plan, family, name, month)
+    return row["worth"], row["rate"], row["worth_unit"]
+
+
+def dense_lp(
+    cost: list[float],
+    rows: dict[tuple[str, ...], tuple[float, list[float], float]],
+    bounds: list[tuple[float, float]] | None = None,
+    columns: list[tuple[str, ...]] | None = None,
+) -> LabelledLp:
+    """A `LabelledLp` written out: row label → (low, coefficients, high); columns are ≥ 0 unless bounds are given."""
+    matrix = np.array([line for _, line, _ in rows.values()], dtype=float).reshape(len(rows), len(cost))
+    labels = tuple(columns or [("x", str(j)) for j in range(len(cost))])
+    low, high = zip(*(bounds or [(0.0, math.inf)] * len(cost)), strict=True)
+    held = [np.flatnonzero(line) for line in matrix]
+    return LabelledLp(
+        rows=tuple(rows),
+        columns=labels,
+        starts=np.array([0, *np.cumsum([len(line) for line in held])], dtype=np.int32),
+        index=np.concatenate(held).astype(np.int32),
+        value=matrix[matrix != 0],
+        row_low=np.array([row[0] for row in rows.values()], dtype=float),
+        row_high=np.array([row[2] for row in rows.values()], dtype=float),
+        low=np.array(low, dtype=float),
+        high=np.array(high, dtype=float),
+        cost=np.array(cost, dtype=float),
+        offset=0.0,
+        row_at={label: i for i, label in enumerate(rows)},
+        column_at={label: j for j, label in enumerate(labels)},
+    )

@@ -104,8 +104,7 @@ def test_side_streams_must_be_of_the_plant_and_take_no_quality():
         "side_streams.refinery_propylene.neighbour.quality\n"
         "  a side stream has no quality, slopes are for what is cracked\n"
         "hint: write another side stream with its composition in the plant",
-        "side_streams.refinery_propylen\n"
-        "  unknown side stream `refinery_propylen`\nhint: did you mean `refinery_propylene`?",
+        "side_streams.refinery_propylen\n  unknown side stream `refinery_propylen`\nhint: did you mean `refinery_propylene`?",
     ]
 
 
@@ -117,7 +116,8 @@ def test_every_sale_outlet_is_in_the_scenario_and_no_other():
         "outlets.hydrogen_burnt\n  `hydrogen_burnt` is no sale, it goes to own_use\n"
         f"hint: its limits stand in the plant: {line('models/brackwater/plant.yaml', 'hydrogen_burnt:')}",
         "outlets.c5_sail\n  unknown outlet `c5_sail`\nhint: did you mean `c5_sale`?",
-        "outlets.fuel_gas_export\n  the outlet `fuel_gas_export` of the plant is missing\nhint: write `max: 0 TJ LHV` to close it",
+        "outlets.fuel_gas_export\n  the outlet `fuel_gas_export` of the plant is missing\n"
+        "hint: write `max: 0 TJ LHV` to close it",
         "outlets.c5_sale\n  the outlet `c5_sale` of the plant is missing\nhint: write `max: 0 kt` to close it",
     ]
 
@@ -202,9 +202,10 @@ def test_unit_factors_name_a_unit_and_a_month():
 
 
 def test_a_factor_on_an_unlimited_unit_has_no_effect(edited):
+    factor = "{month: hour, unit: propylene, factor: 2, reason: x}"
     edits = [
         ("models/thermal_cracker/recovery_units.csv", "propylene,20000", "propylene,unlimited"),
-        ("scenarios/thermal_cracker.yaml", "feeds:", "unit_factors:\n  - {month: hour, unit: propylene, factor: 2, reason: x}\nfeeds:"),
+        ("scenarios/thermal_cracker.yaml", "feeds:", f"unit_factors:\n  - {factor}\nfeeds:"),
     ]
     where = f"scenarios/thermal_cracker.yaml:{int(place(TEXTBOOK, 'feeds').split(':')[1]) + 1}"
     assert edited(TEXTBOOK, edits) == [
@@ -261,7 +262,8 @@ def test_limits_count_what_there_is_under_names_of_their_own():
         "limits.mixed.sum.1.sold\n  unknown outlet `ethylene_sal`\nhint: did you mean `ethylene_sale`?",
         "limits.units.sum\n  its terms are counted in t and GJ LHV: they must all be counted in one unit",
         f"limits.jetty\n  the plant has `jetty` already: {where}\nhint: give this one another name",
-        "limits.naphthas.sum.1.bought\n  `light_naphtha.spot` is not a source of this scenario\nhint: known: contract, spot_cargo",
+        "limits.naphthas.sum.1.bought\n  `light_naphtha.spot` is not a source of this scenario\n"
+        "hint: known: contract, spot_cargo",
         "limits.mixed.sum.2.bought\n  `ethane.cargo` is not a source of this scenario\nhint: known: pipeline",
     ]
 
@@ -273,7 +275,8 @@ def test_ratio_limits_too():
     assert found(MARCH, {"ratio_limits": {"heavy": ratio, "quench_oil_viscosity": plain}}) == [
         "ratio_limits.heavy.to.1.charged\n  unknown feed, `group.feed`, group or `all` `gas_furnace`\n"
         "hint: did you mean `gas_furnaces`?",
-        f"ratio_limits.quench_oil_viscosity\n  the plant has `quench_oil_viscosity` already: {where}\nhint: give this one another name",
+        f"ratio_limits.quench_oil_viscosity\n  the plant has `quench_oil_viscosity` already: {where}\n"
+        "hint: give this one another name",
         "ratio_limits.heavy.of.1.bought\n  `gas_oil.barge` is not a source of this scenario\nhint: did you mean `spot_barge`?",
     ]
 
@@ -291,13 +294,15 @@ def test_a_price_outside_its_window_asks_for_its_unit(edited):
     plant = "models/brackwater/plant.yaml"
     assert edited(MARCH, edits) == [
         f"{line(table, 'feeds.ethane.contract')} [Base]  feeds.ethane.contract\n"
-        f"  warning: `41.0 USc/lb` is 903.9 USD/t, outside the plausible 100 to 800 USD/t ({line(plant, '  feeds.ethane: 100')})\n"
+        f"  warning: `41.0 USc/lb` is 903.9 USD/t, outside the plausible 100 to 800 USD/t "
+        f"({line(plant, '  feeds.ethane: 100')})\n"
         "hint: is the unit right? `41 USc/gal` would be 304.24 USD/t",
         f"{line(table, 'feeds.light_naphtha.contract')} [Base]  feeds.light_naphtha.contract\n"
         f"  warning: `57.0 USD/t`, outside the plausible 150 to 1200 USD/t ({line(plant, '  feeds: 150')})\n"
         "hint: is the unit right? `57 USD/bbl` would be 539.13 USD/t",
         f"{line(table, 'utilities.grid_power')} [Base]  utilities.grid_power\n"
-        f"  warning: `72.0 USD/kWh` is 72000 USD/MWh, outside the plausible 10 to 400 USD/MWh ({line(plant, '  utilities.grid_power: 10')})\n"
+        f"  warning: `72.0 USD/kWh` is 72000 USD/MWh, outside the plausible 10 to 400 USD/MWh "
+        f"({line(plant, '  utilities.grid_power: 10')})\n"
         "hint: is the unit right? `72 USD/MWh` would be 72 USD/MWh",
     ]
 
@@ -362,9 +367,9 @@ def test_steps_grow_dearer_in_a_purchase_and_cheaper_in_a_sale():
     ],
 )
 def test_an_export_dearer_than_an_import_of_the_same_utility(edited, most, level, end, hint):
-    scenario = "scenarios/brackwater_2031_03.yaml"
+    scenario, exports = "scenarios/brackwater_2031_03.yaml", "    exports:\n      surplus_steam"
     edits = [
-        ("models/brackwater/plant.yaml", "    exports:\n      surplus_steam", "    imports: {bought_steam: {}}\n    exports:\n      surplus_steam"),
+        ("models/brackwater/plant.yaml", exports, f"    imports: {{bought_steam: {{}}}}\n{exports}"),
         (scenario, "max: unlimited, price: 0 USD/t", "max: unlimited, price: 12 USD/t"),
         (scenario, "  surplus_steam:", f"  bought_steam: {{max: {most}, price: 10 USD/t}}\n  surplus_steam:"),
     ]
@@ -380,10 +385,10 @@ def test_prices_below_zero_without_and_with_a_maximum(edited):
     assert edited(
         TEXTBOOK,
         [
-            (scenario, "ethane:           {purchase: {max: unlimited, price: 6.55 USc/lb}}", "ethane: {purchase: {max: unlimited, price: -1 USD/t}}"),
-            (scenario, "propane:          {purchase: {max: unlimited, price: 9.73 USc/lb}}", "propane: {purchase: {max: 9 t, price: -1 USD/t}}"),
+            (scenario, "price: 6.55 USc/lb", "price: -1 USD/t"),
+            (scenario, "max: unlimited, price: 9.73 USc/lb", "max: 9 t, price: -1 USD/t"),
             (scenario, "price: 9.93 USc/lb", "price: -1 USD/t"),
-            (scenario, "natural_gas: {max: unlimited, price: 2.50 USD/MMBtu LHV}", "natural_gas: {max: unlimited, price: -1 USD/GJ LHV}"),
+            (scenario, "price: 2.50 USD/MMBtu LHV", "price: -1 USD/GJ LHV"),
             (scenario, "utilities:", "variable_costs:\n  burning: {of: outlet, item: methane_burnt, cost: -1 USD/t}\nutilities:"),
         ],
     ) == [
@@ -414,7 +419,8 @@ def test_a_deduction_below_zero_adds_to_the_price():
     assert found(MARCH, {"outlets.crude_c4_contract.deduction": "-9 USD/t"}) == [
         f"outlets.crude_c4_contract.deduction\n  warning: `-9 USD/t`, outside the plausible 0 to 500 USD/t ({window})\n"
         "hint: are the number and its unit right?",
-        "outlets.crude_c4_contract.deduction\n  warning: a deduction below zero adds to the price: -9 USD/t\nhint: is the sign right?",
+        "outlets.crude_c4_contract.deduction\n  warning: a deduction below zero adds to the price: -9 USD/t\n"
+        "hint: is the sign right?",
     ]
 
 
@@ -444,12 +450,16 @@ def test_what_must_be_bought_has_a_mode(edited):
     ]
 
 
+def least_hours(name: str, feed: str) -> float:
+    case = shipped(name).case
+    return min(case.hours_per_kt[mode] for mode in case.modes if case.mode_feed[mode] == feed)
+
+
 def test_minimum_purchases_fit_into_the_furnaces_that_can_crack_them():
     """Least hours of condensate and gas oil: 1000 / charge × (1 + decoke / run length) of their best modes."""
     changes = {f"feeds.{source}.{side}": amount for source in ("gas_oil.spot_barge", "condensate.spot_cargo")
                for side, amount in (("min", "90 kt"), ("max", "900 kt"))}  # fmt: skip
-    case = shipped(MARCH).case
-    least = sum(min(case.hours_per_kt[m] for m in case.modes if case.mode_feed[m] == f) for f in ("gas_oil", "condensate"))
+    least = least_hours(MARCH, "gas_oil") + least_hours(MARCH, "condensate")
     there = 3 * 744 * 0.975
     group = line("models/brackwater/plant.yaml", "  liquid_furnaces:")
     condensate, gas_oil = (place(MARCH, "feeds", *f.split(".")) for f in ("condensate.spot_cargo", "gas_oil.spot_barge"))
@@ -466,21 +476,21 @@ def test_minimum_purchases_that_share_groups():
     case = shipped(MARCH).case
     groups = ("flexible_furnaces", "liquid_furnaces")
     hours = sum(case.limits["furnace_hours", group, "2031-03"].high or 0 for group in groups)
-    least = {f: min(case.hours_per_kt[m] for m in case.modes if case.mode_feed[m] == f) for f in ("light_naphtha", "full_range_naphtha")}
+    least = {f: least_hours(MARCH, f) for f in ("light_naphtha", "full_range_naphtha")}
     changes = {
         "feeds.light_naphtha.spot": {"min": f"{0.6 * hours / least['light_naphtha']:.3f} kt", "max": "900 kt"},
         "feeds.full_range_naphtha.spot_cargo": {"min": f"{0.6 * hours / least['full_range_naphtha']:.3f} kt", "max": "900 kt"},
     }
     (message,) = found(MARCH, changes)
-    assert f"this needs at least {1.2 * hours:,.0f} h of flexible_furnaces and liquid_furnaces, there are {hours:,.0f} h\n" in message
+    needed = f"this needs at least {1.2 * hours:,.0f} h of flexible_furnaces and liquid_furnaces"
+    assert f"{needed}, there are {hours:,.0f} h\n" in message
     for key, entry in changes.items():
         assert found(MARCH, {key: entry}) == []
 
 
 def test_what_the_tank_cannot_keep_must_be_cracked():
     changes = {"stocks.gas_oil.opening": "199 kt", "stocks.gas_oil.end": {"at_least": "0 kt"}}
-    case = shipped(MONTHS).case
-    least = min(case.hours_per_kt[m] for m in case.modes if case.mode_feed[m] == "gas_oil")
+    least = least_hours(MONTHS, "gas_oil")
     group = line("models/brackwater/plant.yaml", "  liquid_furnaces:")
     assert found(MONTHS, changes) == [
         f"feeds\n  190 kt of gas_oil must be cracked in 2031-03: this needs at least {190 * least:,.0f} h of liquid_furnaces, "
@@ -493,8 +503,7 @@ def test_what_the_tank_cannot_keep_must_be_cracked():
 
 def test_minimum_purchases_of_several_months_may_wait_in_the_tank():
     """One big month fits since the tank takes the rest; two big months do not."""
-    case = shipped(MONTHS).case
-    least = min(case.hours_per_kt[m] for m in case.modes if case.mode_feed[m] == "gas_oil")
+    least = least_hours(MONTHS, "gas_oil")
     month = 3 * 744 * 0.975 / least
     entry = {"max": "900 kt", "min": {"2031-03": f"{month + 5:.3f} kt", "other_months": "0 kt"}}
     assert found(MONTHS, {"feeds.gas_oil.spot_barge": entry}) == []
@@ -613,6 +622,7 @@ def test_a_side_stream_that_nothing_limits_is_refused(edited):
     edits.append((scenario, "propane_sale:   {max: 8 kt", "propane_sale:   {max: unlimited"))
     assert edited(MARRAM, edits) == [
         f"{line(scenario, '    neighbour:')}  side_streams.refinery_propylene.neighbour.max\n"
-        f"  can be unbounded: nothing ends what is bought here and sold as propylene_sale ({line(scenario, '  propylene_sale:')})\n"
+        f"  can be unbounded: nothing ends what is bought here and sold as propylene_sale "
+        f"({line(scenario, '  propylene_sale:')})\n"
         "hint: write a maximum for one of them, or hours or capacities that they use"
     ]

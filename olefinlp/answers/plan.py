@@ -33,6 +33,7 @@ from olefinlp.inputs.units import per_lb
 from olefinlp.lp.algebra import build_model
 from olefinlp.lp.certificate import Certificate, prove
 from olefinlp.lp.compile import LabelledLp, compile_model
+from olefinlp.lp.neighbours import Neighbours
 from olefinlp.lp.solver import Outcome, Solution, Solver, Status
 
 if TYPE_CHECKING:
@@ -177,6 +178,11 @@ class Plan:
     def flat(self) -> Table:
         """All quantities and money in one list, for pivoting."""
         return flat_table(self.quantities, list(self.lines))
+
+    @functools.cached_property
+    def neighbours(self) -> Neighbours:
+        """The plan's program, loaded once more to be solved around this optimum."""
+        return Neighbours(self.lp)
 
     @functools.cached_property
     def audit(self) -> Table:

@@ -38,8 +38,8 @@ def feeds_table(q: Quantities) -> Table:
                 item = case.purchase_item(source, step)
                 price = case.prices[item, month]
                 bought = q.value("bought", source, str(step), month)
-                size = case.tier_size[source, step, month]
-                high = limit.high if limit and len(data.tiers) == 1 else (size if size != float("inf") else None)
+                sizes = [case.tier_size[source, k, month] for k in data.tiers]
+                high = _end_of_step(sizes, step, limit.high if limit else None)
                 rows.append(
                     {
                         "month": month,
@@ -60,6 +60,13 @@ def feeds_table(q: Quantities) -> Table:
                     }
                 )
     return Table("feeds", "Feeds bought", columns, rows)
+
+
+def _end_of_step(sizes: list[float], step: int, whole: float | None) -> float | None:
+    """The most that one step takes; the last one takes what is left of the whole."""
+    if step < len(sizes):
+        return sizes[step - 1]
+    return None if whole is None else whole - sum(sizes[:-1])
 
 
 def _quality(q: Quantities, source: str, month: str) -> str:
@@ -191,8 +198,8 @@ def slate_table(q: Quantities) -> Table:
                 price = case.prices[case.sale_item(outlet, step), month]
                 sold = q.value("sold", outlet, str(step), month)
                 value = content_per_tonne(q, outlet, month) - price.value if outlet in case.deductions else price.value
-                size = case.sale_size[outlet, step, month]
-                high = (limit.high if limit else None) if len(steps) == 1 else (size if size != float("inf") else None)
+                sizes = [case.sale_size[outlet, k, month] for k in steps]
+                high = _end_of_step(sizes, step, limit.high if limit else None)
                 written = f"content less {price.text}" if outlet in case.deductions else price.text
                 rows.append(
                     {

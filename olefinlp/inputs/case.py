@@ -290,7 +290,9 @@ class Reader:
         months = {p.name for p in self.scenario.periods}
         for month, _ in written.by_month:
             if month not in months and not _is_month(month):
-                self.findings.error(place, path_text(path), f"`{month}` is not a month", near_name(month, [*months, "other_months"]))
+                self.findings.error(
+                    place, path_text(path), f"`{month}` is not a month", near_name(month, [*months, "other_months"])
+                )
         if value is None:
             self.findings.error(place, path_text(path), f"has no value for {period.name}", "add it, or `other_months:`")
         return value

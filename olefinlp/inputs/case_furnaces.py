@@ -73,7 +73,9 @@ def _yields(reader: Reader, mode: Mode, parcel: str) -> dict[str, float]:
             reader.findings.error(row.place, f"yields.{parcel}", text, "the slopes reach too far: check them or the quality")
     if not quality:
         for component, written in row.written.items():
-            reader.note(f"yields.{table}.{mode.feed}.{mode.severity}.{component}", "", written, shares[component], "t/t", row.place)
+            reader.note(
+                f"yields.{table}.{mode.feed}.{mode.severity}.{component}", "", written, shares[component], "t/t", row.place
+            )
     return shares
 
 

@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterator
 
 from olefinlp.inputs.case import Part, Reader
 from olefinlp.inputs.case_recovery import plan_unit
-from olefinlp.inputs.case_supply import density_of, tier_ends
+from olefinlp.inputs.case_supply import density_of, steps_of
 from olefinlp.inputs.findings import Place, path_text
 from olefinlp.inputs.measures import MASS
 from olefinlp.inputs.periods import Period
@@ -79,12 +78,12 @@ def _read_sale(reader: Reader, outlet: str, period: Period, basis: Basis) -> Non
     low = reader.amount(sale.min, period, (*path, "min"), measure, basis)
     high = reader.amount(sale.max, period, (*path, "max"), measure, basis)
     places = (reader.scenario.document.place((*path, "min")), reader.scenario.document.place((*path, "max")))
-    sizes = tier_ends(reader, sale.tiers, period, path, measure, basis)
-    case.sale_tiers[outlet] = tuple(range(1, max(1, len(sizes)) + 1))
-    for tier, size in zip(case.sale_tiers[outlet], sizes or [math.inf], strict=True):
+    sizes, end = steps_of(reader, sale.tiers, period, path, measure, basis)
+    case.sale_tiers[outlet] = tuple(range(1, len(sizes) + 1))
+    for tier, size in zip(case.sale_tiers[outlet], sizes, strict=True):
         case.sale_size[outlet, tier, period.name] = size
-    if sizes:
-        high = sum(sizes) if math.isfinite(sum(sizes)) else None
+    if sale.tiers:
+        high = end
         places = (places[0], reader.scenario.document.place((*path, "tiers")))
     _limit(reader, outlet, f"{outlet}", period, (low, high), places)
 
@@ -149,5 +148,3 @@ def _read_specification(reader: Reader, outlet: str, prop: str, spec: Specificat
         for month in reader.case.months:
             words = f"{outlet} {prop} {'at least' if side == 'min' else 'at most'} {written}"
             reader.limit("specification", (outlet, prop, side, month), words, (0.0, None), month=month, places=(place, None))
-
-

@@ -110,7 +110,9 @@ def _read_capacity(reader: Reader, unit: RecoveryUnit, period: Period) -> None:
         return
     factor, reason, place = _factor(reader, unit.name, period)
     rate = unit_rate(unit, unit.capacity)
-    reader.note(f"recovery_units.{unit.name}.capacity", period.name, unit.capacity.text, rate * factor, "per h", unit.place, reason)
+    reader.note(
+        f"recovery_units.{unit.name}.capacity", period.name, unit.capacity.text, rate * factor, "per h", unit.place, reason
+    )
     most = rate * factor * period.hours / 1000
     one = unit_rate(unit)
     reader.limit(
@@ -137,7 +139,12 @@ def _factor(reader: Reader, unit: str, period: Period) -> tuple[float, str, Plac
             place = reader.scenario.document.place(("unit_factors", index))
             reasons.append(written.reason)
             reader.note(
-                path_text(("unit_factors", index, "factor")), period.name, f"{written.factor:g}", written.factor, "× capacity", place
+                path_text(("unit_factors", index, "factor")),
+                period.name,
+                f"{written.factor:g}",
+                written.factor,
+                "× capacity",
+                place,
             )
     return factor, "; ".join(reasons), place
 
@@ -161,8 +168,14 @@ def term_measure(reader: Reader, term: Term) -> Measure:
     if term.kind == "converted":
         return conversion_measure(plant, name)
     if term.kind == "unit_load":
-        return unit_measure(plant.units[name])
+        return base_measure(unit_measure(plant.units[name]))
     return MASS
+
+
+def base_measure(measure: Measure) -> Measure:
+    """The same measure in base units: loads in lb and in t can be added, and are added in t."""
+    words = {"mass": "t", "volume": "m3", "gas_volume": "kNm3", "energy": "MWh" if measure.energy == "power" else "GJ LHV"}
+    return Measure(" × ".join(words[name] for name, _ in measure.dimensions), measure.dimensions, measure.energy)
 
 
 def _terms(reader: Reader, terms: tuple[Term, ...], factor: float = 1.0) -> list[Part]:
@@ -238,5 +251,3 @@ def _read_named(reader: Reader, name: str, limit: NamedLimit, document: Document
             worth=(measure.unit, 1.0),
             places=places,
         )
-
-

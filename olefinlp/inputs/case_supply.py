@@ -12,7 +12,7 @@ from olefinlp.inputs.measures import MASS, Measure
 from olefinlp.inputs.periods import Period
 from olefinlp.inputs.prices import PriceItem
 from olefinlp.inputs.scenario import Scenario
-from olefinlp.inputs.scenario_file import EndAtLeast, EndValue, Source, Stock
+from olefinlp.inputs.scenario_file import EndAtLeast, EndValue, Source, Stock, Tier, Tier
 from olefinlp.inputs.units import Basis, Quantity, UnitError, convert, dims, share
 from olefinlp.inputs.yaml_files import Path_
 
@@ -72,11 +72,11 @@ def _read_source(reader: Reader, label: str, source: Source, period: Period, bas
     places = (reader.scenario.document.place((*path, "min")), reader.scenario.document.place((*path, "max")))
     low = reader.amount(source.min, period, (*path, "min"), MASS, basis)
     high = reader.amount(source.max, period, (*path, "max"), MASS, basis)
-    ends = tier_ends(reader, source.tiers, period, path, MASS, basis)
-    for tier, size in zip(data.tiers, ends or [math.inf], strict=False):
+    sizes, end = steps_of(reader, source.tiers, period, path, MASS, basis)
+    for tier, size in zip(data.tiers, sizes, strict=True):
         case.tier_size[label, tier, month] = size
-    if ends:
-        high = sum(ends) if math.isfinite(sum(ends)) else None
+    if source.tiers:
+        high = end
         places = (places[0], reader.scenario.document.place((*path, "tiers")))
     words = f"{data.feed} {data.name} bought"
     reader.limit("purchase", (label, month), words, (low, high), month=month, places=places)
@@ -93,26 +93,29 @@ def _read_source(reader: Reader, label: str, source: Source, period: Period, bas
         reader.limit("take_or_pay", (label, month), words, (quantity, None), month=month, places=(place, None))
 
 
-def tier_ends(
-    reader: Reader, tiers: tuple, period: Period, path: Path_, measure: Measure, basis: Basis  # type: ignore[type-arg]
-) -> list[float]:
-    """Sizes of the steps in units of the plan, from their cumulative ends."""
+def steps_of(
+    reader: Reader, tiers: tuple[Tier, ...], period: Period, path: Path_, measure: Measure, basis: Basis
+) -> tuple[list[float], float | None]:
+    """Sizes of the steps in units of the plan, from their cumulative ends, and the end of the last.
+
+    The last step itself is left open: its end is the limit on the whole, so that one row carries
+    the shadow price.
+    """
     sizes: list[float] = []
-    start = 0.0
+    start, end = 0.0, None
     for index, tier in enumerate(tiers):
         here: Path_ = (*path, "tiers", index, "up_to")
-        end = reader.amount(Monthly[Cap](tier.up_to), period, here, measure, basis)
+        end = reader.amount(tier.up_to, period, here, measure, basis)
         place = reader.scenario.document.place(here)
         if end is None:
-            sizes.append(math.inf)
             if index < len(tiers) - 1:
                 reader.findings.error(place, path_text(here), "only the last step may be unlimited")
-            return sizes + [math.inf] * (len(tiers) - len(sizes))
+            break
         if end <= start:
             reader.findings.error(place, path_text(here), "each step must end above the one before", "`up_to` counts from zero")
         sizes.append(end - start)
         start = end
-    return sizes
+    return [*sizes[: len(tiers) - 1], *[math.inf] * (max(1, len(tiers)) - len(sizes[: len(tiers) - 1]))], end
 
 
 def _parcel(reader: Reader, feed: str, quality: dict[str, float]) -> str:

@@ -121,7 +121,7 @@ def _by_component(reader: Reader, of: str, cut: str, value: float) -> list[Part]
 
 def _read_trades(reader: Reader) -> None:
     scenario = reader.scenario
-    for trade, (utility, kind) in reader.case.trades.items():
+    for trade, (_, kind) in reader.case.trades.items():
         terms = scenario.file.utilities[trade]
         measure = trade_measure(reader.plant, trade)
         path: Path_ = ("utilities", trade)

@@ -179,7 +179,10 @@ OneQuantity = Annotated[
     WithJsonSchema({"type": "string", "description": "number and unit, for example `30 kt`"}),
 ]
 OneMaximum = Annotated[
-    Cap, PlainValidator(to_maximum), _AS_TEXT, WithJsonSchema({"type": "string", "description": "number and unit, or `unlimited`"})
+    Cap,
+    PlainValidator(to_maximum),
+    _AS_TEXT,
+    WithJsonSchema({"type": "string", "description": "number and unit, or `unlimited`"}),
 ]
 MonthlyQuantity = Annotated[
     Monthly[Quantity], PlainValidator(monthly(to_quantity)), _AS_TEXT, _schema("number and unit, or one per month")

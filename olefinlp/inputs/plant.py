@@ -545,9 +545,7 @@ class _Tables:
         text = row.text(column)
         if text in allowed:
             return True
-        self.findings.error(
-            row.place(column), "", f"`{text}` is not one of: {', '.join(allowed)}", near_name(text, allowed)
-        )
+        self.findings.error(row.place(column), "", f"`{text}` is not one of: {', '.join(allowed)}", near_name(text, allowed))
         return False
 
 
@@ -567,5 +565,15 @@ _UNIT_COLUMNS = ("unit", "capacity", "capacity_unit", "measure", "min_load", "so
 _USE_COLUMNS = ("utility", "direction", "of", "item", "amount", "unit", "source")
 
 __all__ = [
-    "Component", "Mode", "Plant", "RecoveryUnit", "SlopeRow", "UnitLoad", "UtilityUse", "YieldRow", "load_plant", "read_plant", "shown",
+    "Component",
+    "Mode",
+    "Plant",
+    "RecoveryUnit",
+    "SlopeRow",
+    "UnitLoad",
+    "UtilityUse",
+    "YieldRow",
+    "load_plant",
+    "read_plant",
+    "shown",
 ]

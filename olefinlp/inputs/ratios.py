@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from olefinlp.inputs.measures import HEAT, MASS, MEASURES, Measure
 from olefinlp.inputs.plant import Plant, RecoveryUnit
-
 from olefinlp.inputs.units import NO_BASIS, Basis, Quantity, UnitError, convert, dims, parse_unit
 
 _GJ_PER_MWH = 3.6
@@ -71,7 +70,7 @@ def ratio(quantity: Quantity, of: Measure, per: Measure) -> float:
 
     >>> from olefinlp.inputs.units import parse_quantity
     >>> round(ratio(parse_quantity("8364 Btu/lb LHV"), HEAT, MASS), 4)
-    19.4546
+    19.4547
     """
     powers = dict(of.dimensions)
     for name, power in per.dimensions:

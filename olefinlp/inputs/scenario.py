@@ -141,10 +141,10 @@ def _set(data: Any, path: Path_, value: Any, findings: Findings, document: Docum
         written = (*written, part)
         if last:
             data[part] = value
-        elif isinstance(data, list):
-            data = data[part]
-        else:
+        elif isinstance(data, dict):
             data = data.setdefault(part, {})
+        else:
+            data = data[int(part)]
     return written
 
 

@@ -54,7 +54,10 @@ class Row:
             value = math.nan
         if not math.isfinite(value):
             findings.error(
-                self.place(column), "", f"`{text}` is not a number", "a point for decimals, no thousands mark, no unit in the cell"
+                self.place(column),
+                "",
+                f"`{text}` is not a number",
+                "a point for decimals, no thousands mark, no unit in the cell",
             )
             return None
         return value

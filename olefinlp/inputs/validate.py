@@ -26,7 +26,7 @@ def validate(document: Document, model: type[M], findings: Findings) -> M | None
             path = _written_path(document, item["loc"])
             if item["type"] in ("missing", "extra_forbidden"):
                 path = (*_written_path(document, item["loc"][:-1]), item["loc"][-1])
-            found = _message(dict(item), path, document, model)
+            found = _message(dict(item), path, model)
             if found not in seen.setdefault(path, []):
                 seen[path].append(found)
         for path, messages in seen.items():
@@ -47,7 +47,7 @@ def _written_path(document: Document, loc: tuple[str | int, ...]) -> Path_:
     return path
 
 
-def _message(item: dict[str, Any], path: Path_, document: Document, root: type[BaseModel]) -> tuple[str, str]:
+def _message(item: dict[str, Any], path: Path_, root: type[BaseModel]) -> tuple[str, str]:
     kind, context = item["type"], item.get("ctx", {})
     if kind == "written":
         return context["message"], context["hint"]

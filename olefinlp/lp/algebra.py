@@ -12,7 +12,7 @@ which a thing stands never decides a sign. `TEXTS` says each rule in a line: `un
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 from typing import Any
 
 import pyomo.environ as pyo
@@ -338,64 +338,70 @@ def quantity(m: Any, case: Case, part: Part, t: str) -> Any:
 # ---------------------------------------------------------------------------------- objective
 
 
+Line = tuple[str, float, Any]
+"""One line of money: price item, sign (and share of the price), quantity."""
+
+
 def margin(m: Any, case: Case) -> Any:
     """Margin before fixed cost (thousands of the currency), all months."""
-    return sum(
-        sales(m, case, t)
-        + content_value(m, case, t)
-        + traded(m, case, t)
-        - purchases(m, case, t)
-        - shortfall_payments(m, case, t)
-        - variable_costs(m, case, t)
-        - holding(m, case, t)
-        for t in case.months
-    ) + end_value(m, case)
+    priced = sum(sign * case.rate(item, t) * amount for t in case.months for item, sign, amount in money_of_month(m, case, t))
+    return priced + end_value(m, case)
 
 
-def sales(m: Any, case: Case, t: str) -> Any:
+def money_of_month(m: Any, case: Case, t: str) -> Iterator[Line]:
+    """Everything that is bought, sold or paid in a month: the objective is its sum at the prices."""
+    yield from sales(m, case, t)
+    yield from content_value(m, case, t)
+    yield from traded(m, case, t)
+    yield from purchases(m, case, t)
+    yield from shortfall_payments(m, case, t)
+    yield from variable_costs(m, case, t)
+    yield from holding(m, case, t)
+
+
+def sales(m: Any, case: Case, t: str) -> Iterator[Line]:
     """Sales at their prices; outlets of a cut valued by content take their deduction."""
-    return sum(
-        (-1 if o in case.deductions else 1) * case.rate(case.sale_item(o, step), t) * m.sold[o, step, t]
-        for o, steps in case.sale_tiers.items()
-        for step in steps
-    )
+    for o, steps in case.sale_tiers.items():
+        for step in steps:
+            yield case.sale_item(o, step), (-1 if o in case.deductions else 1), m.sold[o, step, t]
 
 
-def content_value(m: Any, case: Case, t: str) -> Any:
+def content_value(m: Any, case: Case, t: str) -> Iterator[Line]:
     """Value of what is in the cuts that are valued by content, as a whole."""
-    return sum(case.rate(f"contents.{cut}.{item}", t) * total(m, case, parts, t) for (cut, item), parts in case.content.items())
+    for (cut, item), parts in case.content.items():
+        yield f"contents.{cut}.{item}", 1, total(m, case, parts, t)
 
 
-def traded(m: Any, case: Case, t: str) -> Any:
+def traded(m: Any, case: Case, t: str) -> Iterator[Line]:
     """Utilities exported, less imported, less emissions paid for."""
-    return sum(
-        (1 if kind == "exports" else -1) * case.rate(f"utilities.{name}", t) * m.trade[name, t]
-        for name, (_, kind) in case.trades.items()
-    )
+    for name, (_, kind) in case.trades.items():
+        yield f"utilities.{name}", (1 if kind == "exports" else -1), m.trade[name, t]
 
 
-def purchases(m: Any, case: Case, t: str) -> Any:
+def purchases(m: Any, case: Case, t: str) -> Iterator[Line]:
     """Feeds and side streams bought, step by step."""
-    return sum(case.rate(case.purchase_item(s, k), t) * m.bought[s, k, t] for s, data in case.sources.items() for k in data.tiers)
+    for s, data in case.sources.items():
+        for k in data.tiers:
+            yield case.purchase_item(s, k), -1, m.bought[s, k, t]
 
 
-def shortfall_payments(m: Any, case: Case, t: str) -> Any:
+def shortfall_payments(m: Any, case: Case, t: str) -> Iterator[Line]:
     """What a take-or-pay contract is paid for quantities not taken."""
-    return sum(
-        case.shortfall_pays[s, t] * case.rate(case.purchase_item(s, 1), t) * m.shortfall[s, t]
-        for s, data in case.sources.items()
-        if data.take_or_pay
-    )
+    for s, data in case.sources.items():
+        if data.take_or_pay:
+            yield case.purchase_item(s, 1), -case.shortfall_pays[s, t], m.shortfall[s, t]
 
 
-def variable_costs(m: Any, case: Case, t: str) -> Any:
+def variable_costs(m: Any, case: Case, t: str) -> Iterator[Line]:
     """Costs per charge, decoke, outlet, cut, load or conversion."""
-    return sum(case.rate(line.price_item, t) * total(m, case, line.parts, t) for line in case.costs)
+    for line in case.costs:
+        yield line.price_item, -1, total(m, case, line.parts, t)
 
 
-def holding(m: Any, case: Case, t: str) -> Any:
+def holding(m: Any, case: Case, t: str) -> Iterator[Line]:
     """Cost of what is held to the end of a month, the last one included."""
-    return sum(case.rate(f"stocks.{item}.holding", t) * stock(m, case, item, t) for item in case.stocks)
+    for item in case.stocks:
+        yield f"stocks.{item}.holding", -1, stock(m, case, item, t)
 
 
 def end_value(m: Any, case: Case) -> Any:

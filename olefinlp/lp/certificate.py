@@ -14,6 +14,8 @@ from olefinlp.lp.compile import Floats, LabelledLp
 from olefinlp.lp.solver import Solution
 
 TOLERANCE = 1e-6
+FLOOR = 1e-5
+"""Where nothing moves, a residual is compared with this share of the largest that moves elsewhere."""
 
 
 class CertificateError(Exception):
@@ -125,7 +127,7 @@ def _finite_size(bound: Floats) -> Floats:
 
 def _at_least(size: Floats, all_sizes: Floats) -> Floats:
     """Sizes with a floor: a row in which nothing moves is compared with what moves elsewhere."""
-    floor = 1e-6 * float(np.max(all_sizes, initial=0.0))
+    floor = FLOOR * float(np.max(all_sizes, initial=0.0))
     return np.maximum(size, max(floor, 1e-300))
 
 

@@ -101,6 +101,32 @@ def compile_model(model: pyo.ConcreteModel) -> LabelledLp:
         )
 
 
+PriceMap = dict[tuple[str, str], tuple[Integers, Floats]]
+"""(price item, month) → columns, and what one unit of the item's rate adds to the cost of each."""
+
+
+def compile_prices(model: pyo.ConcreteModel) -> PriceMap:
+    """How each price enters the objective, from the same lines that the algebra sums.
+
+    With it a change of prices is a change of the cost vector, and nothing else.
+    """
+    from olefinlp.lp.algebra import money_of_month
+
+    with PauseGC():
+        _, variables = _columns(model)
+        at = {id(v): j for j, v in enumerate(variables)}
+        visitor = LinearRepnVisitor({}, var_recorder=OrderedVarRecorder({}, {}, SortComponents.unsorted))
+        sums: dict[tuple[str, str], dict[int, float]] = {}
+        for month in model.case.months:
+            for item, sign, amount in money_of_month(model, model.case, month):
+                into = sums.setdefault((item, month), {})
+                for number, coefficient in _linear(visitor, sign * amount, item).linear.items():
+                    into[at[number]] = into.get(at[number], 0.0) + coefficient
+        return {
+            key: (np.array(list(into), dtype=np.int32), np.array(list(into.values()), dtype=float)) for key, into in sums.items()
+        }
+
+
 def _columns(model: pyo.ConcreteModel) -> tuple[list[Label], list[Any]]:
     labels: list[Label] = []
     variables: list[Any] = []
@@ -128,4 +154,4 @@ def _bound(value: Any, missing: float) -> float:
     return missing if value is None else float(evaluate_expression(value))
 
 
-__all__ = ["Floats", "Integers", "Label", "LabelledLp", "compile_model"]
+__all__ = ["Floats", "Integers", "Label", "LabelledLp", "PriceMap", "compile_model", "compile_prices"]

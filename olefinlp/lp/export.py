@@ -20,11 +20,15 @@ def readable(labels: tuple[Label, ...]) -> list[str]:
     ['bought.ethane.contract.1.2031_03']
     """
     names: list[str] = []
-    seen: dict[str, int] = {}
+    taken: set[str] = set()
     for label in labels:
-        name = re.sub(r"[^A-Za-z0-9_.]+", "_", ".".join(label))[:240].strip("_.")
-        seen[name] = seen.get(name, 0) + 1
-        names.append(name if seen[name] == 1 else f"{name}.again_{seen[name]}")
+        stem = re.sub(r"[^A-Za-z0-9_.]+", "_", ".".join(label))[:240].strip("_.")
+        name, times = stem, 1
+        while name in taken:
+            times += 1
+            name = f"{stem}.again_{times}"
+        taken.add(name)
+        names.append(name)
     return names
 
 

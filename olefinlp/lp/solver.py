@@ -190,6 +190,10 @@ class Solver:
         """Change the limits of one row."""
         self.highs.changeRowBounds(row, low * self.scale, high * self.scale)
 
+    def set_column(self, column: int, low: float, high: float) -> None:
+        """Change the range of one column."""
+        self.highs.changeColBounds(column, low * self.scale, high * self.scale)
+
     def set_cost(self, cost: Floats) -> None:
         """Change all prices."""
         columns = np.arange(len(cost), dtype=np.int32)

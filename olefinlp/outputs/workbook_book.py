@@ -29,6 +29,8 @@ STYLES: dict[str, dict[str, Any]] = {
     "note": {"italic": True, "font_color": "#404040"},
     "header": {"bold": True, "text_wrap": True, "valign": "bottom", "bg_color": SHADE, "bottom": 1, "border_color": LINE},
     "right": {"align": "right"},
+    "filtered": {"align": "right", "indent": 2},
+    "indent": {"align": "left", "indent": 1},
     "bold": {"bold": True},
     "sum": {"bold": True, "top": 1, "border_color": LINE},
     "wrap": {"text_wrap": True, "valign": "top"},

@@ -12,7 +12,7 @@ DARK, LIGHT = (0x12, 0x34, 0x4D), (0xC4, 0xDC, 0xEA)
 
 FULL = "#B4432E"
 GRID = "#D0D7DB"
-FONT = {"name": "Arial", "size": 9}
+FONT = {"name": "Arial", "size": 8}
 
 
 @dataclass(frozen=True)
@@ -54,9 +54,12 @@ def quantity_chart(book: Book, ranges: Ranges, title: str, unit: str) -> Any:
     chart = book.workbook.add_chart({"type": "bar", "subtype": "stacked" if len(ranges.months) > 1 else "clustered"})
     for column, shade in zip(ranges.months, shades(len(ranges.months)), strict=True):
         chart.add_series(_series(ranges, column, shade) | {"gap": 45})
-    chart.set_x_axis({"reverse": True, "num_font": FONT, "line": {"color": GRID}, "major_tick_mark": "none"})
-    numbers = {"num_font": FONT, "num_format": "#,##0.##", "major_gridlines": {"visible": True, "line": {"color": GRID}}}
-    chart.set_y_axis({"name": unit, "name_font": FONT | {"bold": False}, "crossing": "max", **numbers})
+    plain = {"major_gridlines": {"visible": False}, "line": {"color": GRID}, "major_tick_mark": "none"}
+    chart.set_y_axis({"reverse": True, "num_font": FONT, "interval_unit": 1, **plain})
+    numbers = {"num_font": FONT, "num_format": "General", "major_gridlines": {"visible": True, "line": {"color": GRID}}}
+    chart.set_x_axis(
+        {"name": unit, "name_font": FONT | {"bold": False}, "min": 0, "label_position": "high", "line": {"none": True}, **numbers}
+    )
     _finish(chart, title, legend=len(ranges.months) > 1)
     return chart
 
@@ -76,10 +79,12 @@ def load_chart(book: Book, ranges: Ranges, title: str, limit: int) -> Any:
         }
     )
     chart.combine(line)
-    chart.set_x_axis({"num_font": FONT | {"rotation": -45}, "line": {"color": GRID}, "major_tick_mark": "none"})
+    chart.set_x_axis(
+        {"num_font": FONT | {"rotation": -45}, "interval_unit": 1, "line": {"color": GRID}, "major_tick_mark": "none"}
+    )
     numbers = {"min": 0, "num_format": "0%", "num_font": FONT, "major_gridlines": {"visible": True, "line": {"color": GRID}}}
     chart.set_y_axis({"name": "% of maximum", "name_font": FONT | {"bold": False}, **numbers})
-    _finish(chart, title, legend=True)
+    _finish(chart, title, legend=len(ranges.months) > 1)
     return chart
 
 

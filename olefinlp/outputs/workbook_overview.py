@@ -19,14 +19,19 @@ if TYPE_CHECKING:
 
 NAME = "Overview"
 TOP_LIMITS = 8
+WORTHS = "Limits that bind, and what one more unit is worth"
 AGREES_WITHIN = 0.01
 """Thousands of the currency between the margin of the sheet and that of the solver."""
 
 KG_PER_LB = 0.45359237
 ALL_MONTHS = "All months"
 ROW_PIXELS = 18
-CHART_WIDTH, CHART_ROWS = 620, 15
-PAGE_PIXELS = 1000
+CHART_WIDTH, FEED_ROWS, SLATE_ROWS, LOAD_ROWS = 620, 13, 15, 17
+PAGE_ROWS = 31
+"""Rows of feeds and products that leave room for the loads on the same page."""
+
+SEVERAL = 1.4
+"""Charts of several months are taller by this; their page is wider, so that it holds more rows too."""
 
 
 @dataclass
@@ -48,6 +53,10 @@ class Page:
     def headings(self) -> tuple[str, ...]:
         """Headings of the columns of numbers: the months, and all of them when there are several."""
         return (*self.months, ALL_MONTHS) if len(self.months) > 1 else self.months
+
+    def tall(self, rows: int) -> int:
+        """Rows of a chart or a page, more of them when there are several months."""
+        return round(rows * SEVERAL) if len(self.months) > 1 else rows
 
     @property
     def money_unit(self) -> str:
@@ -78,12 +87,13 @@ def write_overview(book: Book, sheet: Any, plan: Plan, money: MoneySheets) -> No
     margin_row = _key_figures(page)
     _check(page, margin_row)
     _limits(page)
+    _texts(page)
     breaks = [page.row]
     _feeds(page)
     _slate(page)
-    breaks.append(page.row)
+    if page.row - breaks[0] > page.tall(PAGE_ROWS):
+        breaks.append(page.row)
     _loads(page)
-    _texts(page)
     _widths(page)
     sheet.set_h_pagebreaks(breaks)
 
@@ -92,10 +102,10 @@ def _facts(page: Page) -> None:
     scenario, months = page.plan.scenario, page.months
     put(page.sheet, 0, 0, scenario.title, page.book.style("title"))
     page.sheet.set_row(0, 24)
-    span = months[0] if len(months) == 1 else f"{months[0]} to {months[-1]}, {len(months)} months"
+    span = months[0] if len(months) == 1 else f"{months[0]} to {months[-1]}, {len(months)} in all"
     facts = (
         ("Plant", scenario.plant.name),
-        ("Months", span),
+        ("Period", span),
         ("Price case", scenario.file.price_case or "as written in the scenario"),
         ("Status", f"{page.plan.status}, proven (see Audit)"),
     )
@@ -110,10 +120,11 @@ def _key_figures(page: Page) -> int:
     plan, months = page.plan, page.months
     page.block("Margin, costs negative", ("", "Unit", *page.headings))
     first = page.row
-    amounts = {(line.group, month): 0.0 for line in plan.lines for month in months}
-    for line in plan.lines:
+    lines = [line for line in plan.lines if line.quantity or line.amount]
+    amounts = {(line.group, month): 0.0 for line in lines for month in months}
+    for line in lines:
         amounts[line.group, line.month] += line.amount
-    groups = [group for group in GROUPS if any(amounts.get((group, month)) for month in months)]
+    groups = [group for group in GROUPS if (group, months[0]) in amounts]
     for group in groups:
         _group_row(page, group, [amounts[group, month] for month in months], first - 1)
     margins = [plan.margin_of(month) / 1000 for month in months]
@@ -170,12 +181,14 @@ def _per_tonne(page: Page, margin_row: int) -> None:
     page.row += 1
     per_tonne = [plan.margin_per_tonne(month) for month in page.months] + [plan.margin_per_tonne()]
     values = ["" if value is None else value for value in per_tonne]
-    formulas = [f'=IF({_up(page, c, 1)}>0,{cell(margin_row, c).replace("$", "")}/{_up(page, c, 1)},"")' for c in _number_columns(page)]
-    _figure_row(page, f"Margin before fixed cost per t of {cut}", f"{plan.currency}/t", formulas, values)
+    formulas = [
+        f'=IF({_up(page, c, 1)}>0,{cell(margin_row, c).replace("$", "")}/{_up(page, c, 1)},"")' for c in _number_columns(page)
+    ]
+    _figure_row(page, f"per t of {cut}, before fixed cost", f"{plan.currency}/t", formulas, values)
     if plan.currency == "USD":
         cents = ["" if value is None else value * KG_PER_LB / 10 for value in per_tonne]
         formulas = [f'=IF({_up(page, c, 2)}>0,{_up(page, c, 1)}*{KG_PER_LB}/10,"")' for c in _number_columns(page)]
-        _figure_row(page, f"Margin before fixed cost per lb of {cut}", "USc/lb", formulas, cents)
+        _figure_row(page, f"per lb of {cut}, before fixed cost", "USc/lb", formulas, cents)
 
 
 def _check(page: Page, margin_row: int) -> None:
@@ -186,46 +199,73 @@ def _check(page: Page, margin_row: int) -> None:
     page.label("Check: the solver's margin", page.money_unit)
     put(page.sheet, page.row, 2, solver, page.book.style(number_format("money", [solver])))
     text = f'=IF(ABS({total}-{cell(page.row, 2)})<{AGREES_WITHIN},"agrees","DOES NOT AGREE")'
-    put_formula(page.sheet, page.row, 3, text, "agrees", page.book.style("bold"))
-    put(page.sheet, page.row, 5, "After a price is changed, the figures above are those of this same plan at that price.", page.book.style("note"))
+    put_formula(page.sheet, page.row, 3, text, "agrees", page.book.style("bold", "indent"))
+    put(
+        page.sheet,
+        page.row,
+        5,
+        "After a price is changed, the figures above are those of this same plan at that price.",
+        page.book.style("note"),
+    )
     alarm = {"type": "cell", "criteria": "==", "value": '"DOES NOT AGREE"', "format": page.book.style("alarm")}
     page.sheet.conditional_format(page.row, 3, page.row, 3, alarm)
     page.row += 1
 
 
 def _limits(page: Page) -> None:
-    """Limits that bind, those with the largest part in the margin; every other one is on its own sheet."""
+    """Limits that bind, those with the largest part in the margin; every one is on its own sheet."""
     found = binding(page.plan.limits)
     shown = top_limits(page.plan, found)
-    page.block("Limits that bind, and what one more unit is worth", ("Limit", "Month", "State", "Worth", "Per", "Plan", "Unit"), texts=3)
-    for at, text in ((4, "Worth unit"), (6, "Unit")):
-        put(page.sheet, page.row - 1, at, text, page.book.style("header"))
-    worths = page.book.style(number_format("price", [row["worth"] for row in shown]))
-    for row in shown:
-        put(page.sheet, page.row, 0, row["limit"])
-        put(page.sheet, page.row, 1, row["month"])
-        put(page.sheet, page.row, 2, row["state"])
-        put(page.sheet, page.row, 3, row["worth"], worths)
-        put(page.sheet, page.row, 4, row["worth_unit"])
-        put(page.sheet, page.row, 5, row["value"], page.book.style(number_format("quantity", [row["value"]])))
-        put(page.sheet, page.row, 6, row["unit"])
-        page.row += 1
-    rest = f"{len(shown)} of {len(found)} limits that bind, those with the largest part in the margin. " if len(found) > len(shown) else ""
-    text = rest + page.plan.limits.note if found else "No limit is worth anything."
-    put(page.sheet, page.row, 0, text, page.book.style("note"))
+    if len(page.months) > 1:
+        _limits_by_month(page, shown)
+    else:
+        _limits_of_month(page, [records[0] for records in shown.values()])
+    everything = {(row["limit"], row["state"]) for row in found}
+    rest = f"{len(shown)} of {len(everything)} limits that bind, those with the largest part in the margin. "
+    text = (rest if len(everything) > len(shown) else "") + page.plan.limits.note
+    put(page.sheet, page.row, 0, text if found else "No limit is worth anything.", page.book.style("note"))
     page.row += 1
 
 
-def top_limits(plan: Plan, found: Sequence[Record]) -> list[Record]:
-    """The limits with the largest |rate × limit|, in the order of months, the largest first within one."""
-    parts: dict[int, float] = {}
-    for record, limit in zip(plan.limits.rows, plan.quantities.case.limits.values(), strict=True):
-        bound = limit.high if record["state"] == "at maximum" else limit.low
-        bound = bound if bound is not None else limit.high
-        parts[id(record)] = abs(record["rate"] / limit.worth_scale * (bound or 0.0))
-    months = plan.quantities.case.months
-    best = sorted(found, key=lambda record: -parts[id(record)])[:TOP_LIMITS]
-    return sorted(best, key=lambda record: (months.index(record["month"]), -parts[id(record)]))
+def _limits_of_month(page: Page, shown: Sequence[Record]) -> None:
+    page.block(WORTHS, ("Limit", "Month", "State", "Worth", "", "Plan"), texts=3)
+    indent = page.book.style("indent")
+    for at, text in ((4, "Worth unit"), (6, "Unit")):
+        put(page.sheet, page.row - 1, at, text, page.book.style("header", "indent"))
+    worths = page.book.style(number_format("price", [row["worth"] for row in shown]))
+    for row in shown:
+        for at, key in enumerate(("limit", "month", "state")):
+            put(page.sheet, page.row, at, row[key])
+        put(page.sheet, page.row, 3, row["worth"], worths)
+        put(page.sheet, page.row, 4, row["worth_unit"], indent)
+        put(page.sheet, page.row, 5, row["value"], page.book.style(number_format("quantity", [row["value"]])))
+        put(page.sheet, page.row, 6, row["unit"], indent)
+        page.row += 1
+
+
+def _limits_by_month(page: Page, shown: dict[tuple[str, str], list[Record]]) -> None:
+    page.block(WORTHS, ("Limit", "Worth unit", *page.months))
+    worths = page.book.style(number_format("price", [row["worth"] for records in shown.values() for row in records]))
+    for (limit, state), records in shown.items():
+        page.label(f"{limit}, {state}", records[0]["worth_unit"])
+        for row in records:
+            put(page.sheet, page.row, 2 + page.months.index(row["month"]), row["worth"], worths)
+        page.row += 1
+
+
+def top_limits(plan: Plan, found: Sequence[Record]) -> dict[tuple[str, str], list[Record]]:
+    """The limits with the largest |rate × limit| over the months, by name and state, the largest first."""
+    limits = {id(record): limit for record, limit in zip(plan.limits.rows, plan.quantities.case.limits.values(), strict=True)}
+    parts: dict[tuple[str, str], float] = {}
+    records: dict[tuple[str, str], list[Record]] = {}
+    for record in found:
+        limit, key = limits[id(record)], (record["limit"], record["state"])
+        sides = (limit.low, limit.high) if record["state"] == "at minimum" else (limit.high, limit.low)
+        bound = sides[0] if sides[0] is not None else sides[1]
+        parts[key] = parts.get(key, 0.0) + abs(record["rate"] / limit.worth_scale * (bound or 0.0))
+        records.setdefault(key, []).append(record)
+    best = sorted(parts, key=lambda key: -parts[key])[:TOP_LIMITS]
+    return {key: records[key] for key in best}
 
 
 def _matrix(page: Page, title: str, rows: dict[tuple[str, str], dict[str, float]], total: bool = True) -> Ranges:
@@ -233,10 +273,10 @@ def _matrix(page: Page, title: str, rows: dict[tuple[str, str], dict[str, float]
     several = total and len(page.months) > 1
     header = page.block(title, ("", "Unit", *page.months, *([ALL_MONTHS] if several else [])))
     first = page.row
+    numbers = [value for by_month in rows.values() for value in by_month.values()]
     for (item, unit), by_month in rows.items():
         page.label(item, unit)
-        kind = "share" if unit == "%" else "quantity"
-        style = page.book.style(number_format(kind, list(by_month.values())))
+        style = page.book.style(number_format("share" if unit == "%" else "quantity", numbers))
         for column, month in enumerate(page.months, 2):
             put(page.sheet, page.row, column, by_month.get(month), style)
         if several:
@@ -245,7 +285,9 @@ def _matrix(page: Page, title: str, rows: dict[tuple[str, str], dict[str, float]
     return Ranges(NAME, header, first, page.row - 1, 0, tuple(range(2, 2 + len(page.months))))
 
 
-def _gathered(rows: Sequence[Record], item: str, value: str, unit: Callable[[Record], str]) -> dict[tuple[str, str], dict[str, float]]:
+def _gathered(
+    rows: Sequence[Record], item: str, value: str, unit: Callable[[Record], str]
+) -> dict[tuple[str, str], dict[str, float]]:
     """Sums of a table by item and month."""
     found: dict[tuple[str, str], dict[str, float]] = {}
     for row in rows:
@@ -259,7 +301,7 @@ def _feeds(page: Page) -> None:
     rows = _gathered(page.plan.feeds.rows, "feed", "bought", lambda _: "kt")
     top = page.row
     ranges = _matrix(page, "Feeds bought", rows)
-    _place(page, top, quantity_chart(page.book, ranges, _leader("Feed bought, kt", rows), "kt"))
+    _place(page, top, quantity_chart(page.book, ranges, _leader("Feed bought, kt", rows), "kt"), FEED_ROWS)
 
 
 def _slate(page: Page) -> None:
@@ -271,7 +313,7 @@ def _slate(page: Page) -> None:
     ranges = _matrix(page, "Products sold", rows)
     if tonnes:
         ranges = Ranges(NAME, ranges.header, ranges.first, ranges.first + len(tonnes) - 1, 0, ranges.months)
-        _place(page, top, quantity_chart(page.book, ranges, _leader("Products sold, kt", tonnes), "kt"))
+        _place(page, top, quantity_chart(page.book, ranges, _leader("Products sold, kt", tonnes), "kt"), SLATE_ROWS)
 
 
 def _leader(title: str, rows: dict[tuple[str, str], dict[str, float]]) -> str:
@@ -298,14 +340,16 @@ def _loads(page: Page) -> None:
     for row in range(ranges.first, ranges.last + 1):
         put(page.sheet, row, limit, 1.0, page.book.style("0%"))
     full = sum(max(by_month.values()) > 0.9995 for by_month in rows.values())
-    title = f"Load, % of maximum: {full} of {len(rows)} are full" + (" in some month" if len(page.months) > 1 else "")
-    _place(page, top, load_chart(page.book, ranges, title, limit), rows=20)
+    title = f"Load, % of maximum (the line is 100 %): {full} of {len(rows)} are full" + (
+        " in some month" if len(page.months) > 1 else ""
+    )
+    _place(page, top, load_chart(page.book, ranges, title, limit), LOAD_ROWS)
 
 
-def _place(page: Page, top: int, chart: Any, rows: int = CHART_ROWS) -> None:
+def _place(page: Page, top: int, chart: Any, rows: int) -> None:
     """Put a chart right of the table that starts below row `top`, and go on below both."""
-    high = max(page.row - top, rows)
-    chart.set_size({"width": CHART_WIDTH, "height": high * ROW_PIXELS - 8})
+    high = max(page.row - top, page.tall(rows))
+    chart.set_size({"width": CHART_WIDTH, "height": (high - 1) * ROW_PIXELS - 8})
     page.sheet.insert_chart(top + 1, 3 + len(page.headings), chart, {"x_offset": 6, "y_offset": 2, "object_position": 2})
     page.row = max(page.row, top + high)
 
@@ -331,12 +375,14 @@ def _texts(page: Page) -> None:
 def _widths(page: Page) -> None:
     """Columns wide enough for their texts and amounts."""
     plan = page.plan
-    names = [*(row["limit"] for row in plan.limits.rows), *(row["outlet"] for row in plan.slate.rows)]
-    first = max((len(str(name)) for name in names), default=0)
-    page.sheet.set_column(0, 0, min(max(first, 42), 50))
-    page.sheet.set_column(1, 1, 10)
+    shown = top_limits(plan, binding(plan.limits))
+    names = [*(f"{limit}, {state}" for limit, state in shown), *(row["outlet"] for row in plan.slate.rows)]
+    page.sheet.set_column(0, 0, min(max([*map(len, names), 36]) + 2, 50))
     amount = max((abs(line.amount) for line in plan.lines), default=0.0) * 2
     number = max(len(f"{amount:,.2f}") + 2, 11)
     page.sheet.set_column(2, 2 + len(page.headings), number)
-    worth = max((len(row["worth_unit"]) for row in top_limits(plan, binding(plan.limits))), default=0)
-    page.sheet.set_column(4, 4, max(worth + 1, number))
+    worth = max((len(record["worth_unit"]) + 2 for records in shown.values() for record in records), default=0)
+    several = len(page.months) > 1
+    page.sheet.set_column(1, 1, max(worth, 10) if several else 10)
+    if not several:
+        page.sheet.set_column(4, 4, max(worth, number))

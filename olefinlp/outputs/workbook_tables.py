@@ -11,9 +11,13 @@ from typing import Any
 from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.outputs.workbook_book import Book, cell, clean, letters, put, put_formula
 
-WIDEST = 45
-NARROWEST = 7
+WIDEST, WIDEST_WORD, NARROWEST = 45, 70, 7
+"""Widths of columns, in digits: texts wrap at the first, unless a single word is longer."""
+
 LINE_HEIGHT = 13.5
+FILTER_ARROW = 4
+"""Width that the arrow of the filter takes from a heading that stands at the right."""
+
 ROUNDING = 1e-9
 """Quantities smaller than this part of the largest in their column are the solver's rounding."""
 
@@ -63,7 +67,7 @@ def number_format(kind: str, values: Sequence[Any]) -> str:
     """How the numbers of a column are shown; small ones get more decimals.
 
     >>> number_format("quantity", [162.4, 0.2]), number_format("quantity", [0.0272])
-    ('#,##0.00', '0.0000')
+    ('#,##0.00', '0.000000')
     """
     largest = size_of(values)
     if kind == "share":
@@ -74,7 +78,7 @@ def number_format(kind: str, values: Sequence[Any]) -> str:
         return "0"
     if kind == "number":
         return "0.0E+00" if 0 < largest < 0.01 else "General"
-    return "#,##0.00" if largest >= 1 or largest == 0 else "0.0000"
+    return "#,##0.00" if largest >= 0.1 or largest == 0 else "0.000000"
 
 
 def size_of(values: Sequence[Any]) -> float:
@@ -102,37 +106,57 @@ def write_table(
         line = ". ".join(part.rstrip(".") for part in (table.title, table.note, remark) if part) + "."
         sheet.write_string(0, 0, clean(line), book.style("note"))
     lines = 1
+    after_number, wrapped = False, dict[str, float]()
     for at, column in enumerate(table.columns):
         values = [row[column.key] for row in rows]
         width = width_of(column, values)
-        lines = max(lines, len(textwrap.wrap(column.heading, width - 1, break_long_words=False)))
-        text = column.kind == "text"
-        sheet.write_string(header, at, clean(column.heading), book.style("header") if text else book.style("header", "right"))
+        room = width - (1 if column.kind == "text" else FILTER_ARROW)
+        lines = max(lines, len(textwrap.wrap(column.heading, room, break_long_words=False)))
+        style = _style_words(column, values)
+        if "wrap" in style:
+            wrapped[column.key] = width
+        words = ["indent"] if after_number and column.kind == "text" else []
+        after_number = column.kind != "text"
+        sheet.write_string(header, at, clean(column.heading), book.style("header", *(["filtered"] if after_number else words)))
         sheet.set_column(at, at, width)
-        given = (formulas or {}).get(column.key)
-        marked = (inputs or {}).get(column.key)
-        _write_column(book, sheet, (header + 1, at), column, values, given, marked)
+        given, marked = (formulas or {}).get(column.key), (inputs or {}).get(column.key)
+        _write_column(book, sheet, (header + 1, at), (*style, *words), column, values, given, marked)
     sheet.set_row(header, LINE_HEIGHT * lines + 3)
-    sheet.freeze_panes(header + 1, frozen)
-    sheet.autofilter(header, 0, header + max(len(rows), 1), len(table.columns) - 1)
-    sheet.repeat_rows(header)
-    whole = f"A{header + 1}:{letters(len(table.columns) - 1)}{header + 1 + max(len(rows), 1)}"
-    sheet.ignore_errors({"number_stored_as_text": whole, "formula_differs": whole})
+    _set_up(sheet, table, header, frozen)
+    _set_heights(sheet, table, header, wrapped)
     if not rows:
         sheet.write_string(header + 1, 0, "none", book.style("note"))
+
+
+def _set_heights(sheet: Any, table: Table, header: int, wrapped: dict[str, float]) -> None:
+    """Room for texts that wrap; programs differ in whether they make it themselves."""
+    for number, row in enumerate(table.rows, header + 1):
+        lines = max((math.ceil(len(row[key] or "") / (width - 2)) for key, width in wrapped.items()), default=1)
+        if lines > 1:
+            sheet.set_row(number, LINE_HEIGHT * lines)
+
+
+def _set_up(sheet: Any, table: Table, header: int, frozen: int) -> None:
+    """What stays in view, the filter, the rows printed on each page."""
+    last, right = header + max(len(table.rows), 1), len(table.columns) - 1
+    sheet.freeze_panes(header + 1, frozen)
+    sheet.autofilter(header, 0, last, right)
+    sheet.repeat_rows(header)
+    whole = f"A{header + 1}:{letters(right)}{last + 1}"
+    sheet.ignore_errors({"number_stored_as_text": whole, "formula_differs": whole})
 
 
 def _write_column(
     book: Book,
     sheet: Any,
     start: tuple[int, int],
+    plain: tuple[str, ...],
     column: Column,
     values: Sequence[Any],
     formulas: Sequence[str | None] | None,
     marked: Sequence[bool] | None,
 ) -> None:
     first, at = start
-    plain = _style_words(column, values)
     style, marked_style = book.style(*plain), book.style(*plain, "input")
     tiny = ROUNDING * size_of(values) if column.kind == "quantity" else 0.0
     for number, value in enumerate(values):
@@ -149,22 +173,28 @@ def _write_column(
 def _style_words(column: Column, values: Sequence[Any]) -> tuple[str, ...]:
     if column.kind != "text":
         return (number_format(column.kind, values), "top")
-    longest = max((len(value) for value in values if isinstance(value, str)), default=0)
-    return ("wrap",) if longest > WIDEST else ("top",)
+    return ("wrap",) if _longest(values) > WIDEST - 2 else ("top",)
+
+
+def _longest(values: Sequence[Any]) -> int:
+    return max((len(value) for value in values if isinstance(value, str)), default=0)
 
 
 def width_of(column: Column, values: Sequence[Any]) -> float:
     """A width in which the content, and every word of the heading, can be read."""
     words = max(len(word) for word in column.heading.split())
-    heading = max(words, min(len(column.heading), 11)) + 3
+    heading = max(words, min(len(column.heading), 11)) + (3 if column.kind == "text" else FILTER_ARROW + 1)
     if column.kind == "text":
-        content = max((len(value) for value in values if isinstance(value, str)), default=0)
+        content = _longest(values)
+        if content > WIDEST - 2:
+            word = max(len(word) for value in values if isinstance(value, str) for word in value.split() or [""])
+            return min(max(WIDEST, word + 2), WIDEST_WORD)
     elif column.kind == "number":
         content = 11
     else:
         decimals = number_format(column.kind, values).partition(".")[2].count("0")
         content = len(f"{size_of(values):,.{decimals}f}") + 1
-    return min(max(content + 1.5, heading, NARROWEST), WIDEST)
+    return min(max(content + 2.0, heading, NARROWEST), WIDEST)
 
 
 def with_columns(table: Table, columns: Sequence[Column], rows: list[Record]) -> Table:

@@ -1,0 +1,34 @@
+"""What every answer around a plan is: tables, sentences in plain words, and how to read them."""
+
+from __future__ import annotations
+
+import typing
+from dataclasses import dataclass
+
+from olefinlp.answers.tables import Table
+
+if typing.TYPE_CHECKING:
+    import pandas as pd
+
+
+@dataclass(frozen=True)
+class Answer:
+    """An answer: `tables` (the first is the main one), `sentences`, and a `note` on its use."""
+
+    name: str
+    title: str
+    tables: tuple[Table, ...]
+    sentences: tuple[str, ...]
+    note: str = ""
+
+    @property
+    def table(self) -> Table:
+        """The main table."""
+        return self.tables[0]
+
+    def to_frame(self) -> pd.DataFrame:
+        """The main table as a DataFrame."""
+        return self.table.to_frame()
+
+    def __str__(self) -> str:
+        return "\n".join([self.title, *(f"  {sentence}" for sentence in self.sentences)])

@@ -1,0 +1,276 @@
+"""Break-even prices of every feed on offer: first tonne, last tonne planned, next tonne, parcels.
+
+For one source the best margin without its own cost, V(q), is concave in the volume q that is
+forced in; its slope is what the next tonne is worth at the gate. A source is bought up to where
+that falls to its price.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from olefinlp.answers.answer import Answer
+from olefinlp.answers.tables import Column, Record, Table
+from olefinlp.lp.compile import Label
+from olefinlp.lp.neighbours import Neighbours
+from olefinlp.lp.steps import Point, Side, side
+
+if TYPE_CHECKING:
+    from olefinlp.answers.plan import Plan
+    from olefinlp.inputs.prices import Price
+
+QUARTERS = (0.25, 0.5, 0.75, 1.0)
+REACH = 0.25
+
+
+@dataclass(frozen=True)
+class Offer:
+    """One source in one month: what is bought and what is offered, kt (inf: unlimited).
+
+    `must` is its minimum, `paid_anyway` the share of the price that is paid for a tonne below the
+    take-or-pay quantity `committed`, taken or not.
+    """
+
+    source: str
+    month: str
+    bought: float
+    offered: float
+    must: float
+    committed: float
+    paid_anyway: float
+    price: Price
+    marginal: Price
+
+    def avoidable(self, below: bool) -> float:
+        """Share of the price that not taking the tonne below (or above) today's volume saves."""
+        inside = self.bought <= self.committed if below else self.bought < self.committed
+        return 1 - self.paid_anyway if inside and self.committed else 1.0
+
+
+class Value:
+    """V(q) of one offer: best margin without any cost of its own, with q kt of it forced in."""
+
+    def __init__(self, neighbours: Neighbours, offer: Offer, tiers: tuple[int, ...]) -> None:
+        lp = neighbours.lp
+        self.neighbours = neighbours
+        self.columns = [lp.column_at["bought", offer.source, str(k), offer.month] for k in tiers]
+        own = [*self.columns, *_found(lp.column_at, ("shortfall", offer.source, offer.month))]
+        row = lp.row_at.get(("purchase_limit", offer.source, offer.month))
+        self.rows = {} if row is None else {row: (-math.inf, math.inf)}
+        self.cost = lp.cost.copy()
+        self.cost[own] = 0.0
+
+    def __call__(self, volume: float) -> Point | None:
+        """V and its slope; None when so much cannot be taken or done without."""
+        first, *others = self.columns
+        columns = {first: (volume, volume)} | dict.fromkeys(others, (0.0, 0.0))
+        solution = self.neighbours.solve(cost=self.cost, rows=self.rows, columns=columns)
+        return None if solution is None else Point(volume, solution.objective, float(solution.reduced[first]))
+
+
+def _found(places: dict[Label, int], label: Label) -> list[int]:
+    return [places[label]] if label in places else []
+
+
+def offers(plan: Plan) -> list[Offer]:
+    """Every source of every month."""
+    case = plan.quantities.case
+    return [_offer(plan, source, month) for month in case.months for source in case.sources]
+
+
+def _offer(plan: Plan, source: str, month: str) -> Offer:
+    q, case = plan.quantities, plan.quantities.case
+    limit, pay = case.limits.get(("purchase", source, month)), case.limits.get(("take_or_pay", source, month))
+    bought = q.bought(source, month)
+    tiers = case.sources[source].tiers
+    prices = [case.prices[case.purchase_item(source, k), month] for k in tiers]
+    reached, marginal = 0.0, prices[-1]
+    for k, price in zip(tiers, prices, strict=True):
+        reached += case.tier_size[source, k, month]
+        if bought <= reached * (1 + 1e-9):
+            marginal = price
+            break
+    return Offer(
+        source=source,
+        month=month,
+        bought=bought,
+        offered=limit.high if limit and limit.high is not None else math.inf,
+        must=limit.low if limit and limit.low else 0.0,
+        committed=pay.low if pay and pay.low else 0.0,
+        paid_anyway=case.shortfall_pays.get((source, month), 0.0),
+        price=prices[0],
+        marginal=marginal,
+    )
+
+
+def break_even_prices(plan: Plan, parcels: Sequence[float] | None = None) -> Answer:
+    """Entry, exit and parcel break-even prices of every source, bought or not.
+
+    `parcels` are sizes in kt; quarters of what is offered if not given. Prices are per t and in
+    the unit in which the source is priced. A parcel's value is what it is worth on average,
+    against buying nothing from that source; the last parcel's own value is its increment.
+    """
+    columns = _columns(plan.currency)
+    size = sum(abs(line.amount) for line in plan.lines)
+    rows: list[Record] = []
+    parcel_rows: list[Record] = []
+    for offer in offers(plan):
+        value = Value(plan.neighbours, offer, plan.quantities.case.sources[offer.source].tiers)
+        rows.append(_break_even(offer, value, size))
+        parcel_rows += _parcels(offer, value, parcels)
+    note = (
+        "All else re-optimised, other prices held. A worth below the price of a feed that is bought shows a contract that binds."
+    )
+    table = Table("break_even", "Break-even prices", columns, rows, note)
+    sizes = Table(
+        "parcels", "Value of parcels", _parcel_columns(plan.currency), parcel_rows, "Against buying nothing from the source."
+    )
+    return Answer("break_even", "Break-even prices of feeds", (table, sizes), tuple(_sentence(row) for row in rows), note)
+
+
+def _columns(currency: str) -> tuple[Column, ...]:
+    per_tonne = f"{currency}/t"
+    return (
+        Column("month", "Month"),
+        Column("feed", "Feed"),
+        Column("source", "Source"),
+        Column("bought", "Bought", "kt", "quantity"),
+        Column("offered", "Offered", "kt", "quantity"),
+        Column("price", "Price", per_tonne, "price"),
+        Column("entry", "First tonne worth", per_tonne, "price"),
+        Column("exit", "Last tonne planned worth", per_tonne, "price"),
+        Column("next", "Next tonne worth", per_tonne, "price"),
+        Column("walk_away", "Walk-away price", per_tonne, "price"),
+        Column("headroom", "Headroom", per_tonne, "price"),
+        Column("step_down", "Next step down", "kt", "quantity"),
+        Column("step_up", "Next step up", "kt", "quantity"),
+        Column("trade_unit", "Trade unit"),
+        Column("price_trade", "Price", "trade unit", "price"),
+        Column("walk_away_trade", "Walk-away price", "trade unit", "price"),
+        Column("stays_from", "Volume stays from", "trade unit", "price"),
+        Column("stays_to", "Volume stays to", "trade unit", "price"),
+        Column("paid_anyway", "Paid anyway", "%", "share"),
+    )
+
+
+def _parcel_columns(currency: str) -> tuple[Column, ...]:
+    per_tonne = f"{currency}/t"
+    return (
+        Column("month", "Month"),
+        Column("feed", "Feed"),
+        Column("source", "Source"),
+        Column("size", "Parcel", "kt", "quantity"),
+        Column("value", "Worth on average", per_tonne, "price"),
+        Column("increment", "Worth of the last part", per_tonne, "price"),
+        Column("trade_unit", "Trade unit"),
+        Column("value_trade", "Worth on average", "trade unit", "price"),
+    )
+
+
+def _break_even(offer: Offer, value: Value, size: float) -> Record:
+    down, up, entry = _slopes(offer, value, size)
+    factor, unit = _trade(offer.marginal)
+    feed, _, name = offer.source.partition(".")
+    held = offer.bought > 0 and offer.bought <= offer.must * (1 + 1e-9)
+    stays_to = None if down.slope is None or held else down.slope / offer.avoidable(below=True)
+    stays_from = None if up.slope is None else up.slope / offer.avoidable(below=False)
+    walk_away = stays_to if offer.bought else stays_from
+    return {
+        "month": offer.month,
+        "feed": feed,
+        "source": name,
+        "bought": offer.bought,
+        "offered": offer.offered if math.isfinite(offer.offered) else None,
+        "price": offer.marginal.value,
+        "entry": entry,
+        "exit": down.slope,
+        "next": up.slope,
+        "walk_away": walk_away,
+        "headroom": None if walk_away is None else walk_away - offer.marginal.value,
+        "step_down": down.until if down.next_slope is not None else None,
+        "step_up": up.until if up.next_slope is not None else None,
+        "trade_unit": unit,
+        "price_trade": offer.marginal.value / factor,
+        "walk_away_trade": None if walk_away is None else walk_away / factor,
+        "stays_from": None if stays_from is None or not offer.bought else stays_from / factor,
+        "stays_to": None if stays_to is None else stays_to / factor,
+        "paid_anyway": offer.paid_anyway if offer.avoidable(below=True) < 1 else None,
+        "must_take": held,
+    }
+
+
+def _slopes(offer: Offer, value: Value, size: float) -> tuple[Side, Side, float | None]:
+    """Worth below and above today's volume, with the next steps, and worth of the first tonne."""
+    base = value(offer.bought)
+    none = Side(None, None, None)
+    if base is None:
+        return none, none, None
+    whole = offer.offered if math.isfinite(offer.offered) else max(2 * offer.bought, 1.0)
+    reach = REACH * whole
+    down = side(value, base, -min(offer.bought, reach), size)
+    up = side(value, base, min(whole - offer.bought, reach), size)
+    if not offer.bought:
+        return down, up, up.slope
+    nothing = value(0.0)
+    return down, up, None if nothing is None else side(value, nothing, min(offer.bought, reach), size).slope
+
+
+def _trade(price: Price) -> tuple[float, str]:
+    """The unit in which a source is priced, and what one of it is per t."""
+    return (price.factor, price.unit) if not price.of else (1.0, price.unit_used)
+
+
+def _parcels(offer: Offer, value: Value, sizes: Sequence[float] | None) -> list[Record]:
+    wanted = list(sizes) if sizes is not None else [q * offer.offered for q in QUARTERS if math.isfinite(offer.offered)]
+    nothing = value(0.0) if wanted and max(wanted) > 0 else None
+    if nothing is None:
+        return []
+    factor, unit = _trade(offer.price)
+    feed, _, name = offer.source.partition(".")
+    rows: list[Record] = []
+    before = nothing
+    for size in sorted(size for size in wanted if 0 < size <= offer.offered * (1 + 1e-9)):
+        point = value(size)
+        if point is None:
+            break
+        average = (point.value - nothing.value) / size
+        rows.append(
+            {
+                "month": offer.month,
+                "feed": feed,
+                "source": name,
+                "size": size,
+                "value": average,
+                "increment": (point.value - before.value) / (size - before.at),
+                "trade_unit": unit,
+                "value_trade": average / factor,
+            }
+        )
+        before = point
+    return rows
+
+
+def _sentence(row: Record) -> str:
+    name = f"{row['month']}: {row['feed']} {row['source']}"
+    unit, today = row["trade_unit"], f"today {row['price_trade']:,.1f}"
+    if row["must_take"]:
+        return f"{name}: the planned {row['bought']:,.1f} kt must be taken; the last tonne is worth {_shown(row['exit'])} per t."
+    if row["walk_away_trade"] is None:
+        if row["bought"]:
+            return f"{name}: the planned {row['bought']:,.1f} kt cannot be done without at any price."
+        return f"{name} cannot be taken at any price."
+    if not row["bought"]:
+        return f"{name} is not bought: its first tonne is worth {row['walk_away_trade']:,.1f} {unit}, {today}."
+    text = f"{name}: buy the planned {row['bought']:,.1f} kt up to {row['walk_away_trade']:,.1f} {unit} ({today})"
+    if row["paid_anyway"]:
+        text += f", as {row['paid_anyway']:.0%} is paid even if it is not taken"
+    if row["step_down"] is not None:
+        text += f"; above that the next step down is to {row['step_down']:,.1f} kt"
+    return text + "."
+
+
+def _shown(value: float | None) -> str:
+    return "nothing known" if value is None else f"{value:,.1f}"
