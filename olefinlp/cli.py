@@ -41,7 +41,7 @@ def main(version: Annotated[bool, typer.Option("--version", help="Print the vers
     for name in ("stdout", "stderr"):
         stream = getattr(sys, name)
         if stream is None:  # a scheduled job may have neither
-            setattr(sys, name, open(os.devnull, "w", encoding="utf-8"))
+            setattr(sys, name, Path(os.devnull).open("w", encoding="utf-8"))  # noqa: SIM115
         elif hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")
     if version:

@@ -2,13 +2,27 @@
 
 from __future__ import annotations
 
-import typing
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 from olefinlp.answers.tables import Table
 
-if typing.TYPE_CHECKING:
+if TYPE_CHECKING:
     import pandas as pd
+
+
+@dataclass(frozen=True, slots=True)
+class Chart:
+    """A picture of the main table: `steps` between two x columns, or a `line` through one."""
+
+    kind: str
+    title: str
+    x: str
+    x_end: str
+    y: str
+    x_unit: str
+    y_unit: str
+    today: float
 
 
 @dataclass(frozen=True)
@@ -20,6 +34,7 @@ class Answer:
     tables: tuple[Table, ...]
     sentences: tuple[str, ...]
     note: str = ""
+    chart: Chart | None = None
 
     @property
     def table(self) -> Table:

@@ -32,7 +32,7 @@ from olefinlp.inputs.scenario import Scenario
 from olefinlp.inputs.units import per_lb
 from olefinlp.lp.algebra import build_model
 from olefinlp.lp.certificate import Certificate, prove
-from olefinlp.lp.compile import LabelledLp, compile_model
+from olefinlp.lp.compile import LabelledLp, PriceMap, compile_model, compile_prices
 from olefinlp.lp.neighbours import Neighbours
 from olefinlp.lp.solver import Outcome, Solution, Solver, Status
 
@@ -183,6 +183,11 @@ class Plan:
     def neighbours(self) -> Neighbours:
         """The plan's program, loaded once more to be solved around this optimum."""
         return Neighbours(self.lp)
+
+    @functools.cached_property
+    def price_map(self) -> PriceMap:
+        """How each price enters the objective."""
+        return compile_prices(build_model(self.quantities.case))
 
     @functools.cached_property
     def audit(self) -> Table:

@@ -67,7 +67,8 @@ def limit_curve(neighbours: Neighbours, limit: Limit, low_side: bool) -> Evaluat
         solution = neighbours.solve(rows={row: pair})
         if solution is None:
             return None
-        return Point(at, solution.objective, float(solution.row_dual[row]))
+        dual = float(solution.row_dual[row])  # where both sides meet, only a dual of this side's sign is this side's
+        return Point(at, solution.objective, min(dual, 0.0) if low_side else max(dual, 0.0))
 
     return evaluate
 

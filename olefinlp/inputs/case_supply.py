@@ -6,13 +6,12 @@ import math
 from collections.abc import Iterator
 
 from olefinlp.inputs.case import Reader, SourceData, StockData
-from olefinlp.inputs.fields import Cap, Monthly
 from olefinlp.inputs.findings import path_text
 from olefinlp.inputs.measures import MASS, Measure
 from olefinlp.inputs.periods import Period
 from olefinlp.inputs.prices import PriceItem
 from olefinlp.inputs.scenario import Scenario
-from olefinlp.inputs.scenario_file import EndAtLeast, EndValue, Source, Stock, Tier, Tier
+from olefinlp.inputs.scenario_file import EndAtLeast, EndValue, Source, Stock, Tier
 from olefinlp.inputs.units import Basis, Quantity, UnitError, convert, dims, share
 from olefinlp.inputs.yaml_files import Path_
 

@@ -44,7 +44,8 @@ def certify(lp: LabelledLp, solution: Solution) -> Certificate:
     """The certificate of a solution; it may hold or not.
 
     primal: how far a row or bound is broken, over Σ|a x| + |limit| of that row;
-    dual: how far a reduced cost (worked out again as c − Aᵀy) has the wrong sign, over |c| + Σ|a y|;
+    dual: how far a reduced cost (worked out again as c − Aᵀy) has the wrong sign, over |c| + Σ|a y|,
+    and how much money a row's dual of the wrong sign stands for, over the money that moves, Σ|c x|;
     complementarity: |dual × slack| over the money that moves, Σ|c x|;
     gap: margin less Σ dual × limit, over the same.
     """
@@ -52,8 +53,8 @@ def certify(lp: LabelledLp, solution: Solution) -> Certificate:
     activity = lp.activity(x)
     reduced = lp.cost - lp.gathered(y)
     primal, worst_row = _primal(lp, x, activity)
-    dual, worst_column = _dual(lp, y, reduced)
-    money = float(np.abs(lp.cost) @ np.abs(x)) + abs(lp.offset) + 1e-12
+    dual, worst_column = _dual(lp, x, y, reduced)
+    money = _money(lp, x)
     row_limit, row_slack = _active(y, lp.row_low, lp.row_high, activity)
     column_limit, column_slack = _active(_kept(lp, reduced, y), lp.low, lp.high, x)
     kept = _kept(lp, reduced, y)
@@ -90,14 +91,22 @@ def _primal(lp: LabelledLp, x: Floats, activity: Floats) -> tuple[float, str]:
     return _largest(worst[0]), _name(worst[1], worst[0])
 
 
-def _dual(lp: LabelledLp, y: Floats, reduced: Floats) -> tuple[float, str]:
+def _dual(lp: LabelledLp, x: Floats, y: Floats, reduced: Floats) -> tuple[float, str]:
     size = _dual_size(lp, y)
     wrong = np.where(np.isinf(lp.high), np.maximum(reduced, 0), 0) + np.where(np.isinf(lp.low), np.maximum(-reduced, 0), 0)
     columns = wrong / _at_least(size, size)
     wrong_rows = np.where(np.isinf(lp.row_high), np.maximum(y, 0), 0) + np.where(np.isinf(lp.row_low), np.maximum(-y, 0), 0)
-    rows = wrong_rows / _at_least(np.abs(y), np.abs(y))
+    sizes = lp.sizes(x)
+    rows = wrong_rows * _at_least(sizes, sizes) / _money(lp, x)
     worst = max((columns, lp.columns), (rows, lp.rows), key=lambda pair: _largest(pair[0]))
     return _largest(worst[0]), _name(worst[1], worst[0])
+
+
+def _money(lp: LabelledLp, x: Floats) -> float:
+    """The money that moves, Σ|c x|; where next to none does, a small share of what could."""
+    size = np.abs(x)
+    could = float(np.abs(lp.cost).max(initial=0.0)) * float(size.max(initial=0.0))
+    return max(float(np.abs(lp.cost) @ size) + abs(lp.offset), FLOOR * could, 1e-300)
 
 
 def _dual_size(lp: LabelledLp, y: Floats) -> Floats:

@@ -10,11 +10,13 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import replace
 
+import highspy
 import numpy as np
 
-from olefinlp.lp.certificate import CertificateError, certify
+from olefinlp.lp.certificate import CertificateError, certify, prove
 from olefinlp.lp.compile import Floats, LabelledLp
 from olefinlp.lp.solver import Outcome, Solution, Solver, Status
+from olefinlp.lp.steps import Point
 
 MARGIN_ROW = ("margin_kept",)
 Bounds = Mapping[int, tuple[float, float]]
@@ -54,6 +56,20 @@ class Neighbours:
         self.base = outcome.solution
         self.basis = self.solver.highs.getBasis()
         self.solves = 1
+
+    def only_one(self) -> bool:
+        """Whether the base optimum is surely the only one: nothing outside the basis is free of cost."""
+        money = float(np.abs(self.lp.cost) @ np.abs(self.base.x)) or 1.0
+        small = 1e-10 * money
+        basic = highspy.HighsBasisStatus.kBasic
+        for status, dual, low, high in (
+            (self.basis.col_status, self.base.reduced, self.lp.low, self.lp.high),
+            (self.basis.row_status, self.base.row_dual, self.lp.row_low, self.lp.row_high),
+        ):
+            free = [s != basic for s in status]
+            if np.any(np.array(free) & (np.abs(dual) < small) & (low < high)):
+                return False
+        return True
 
     def solve(
         self,
@@ -136,3 +152,48 @@ class Neighbours:
             high=column_high,
             cost=self.lp.cost if cost is None else cost,
         )
+
+
+class RatioNeighbours:
+    """The program with one row more, Σ of − ratio × Σ to = 0, solved for one ratio after another."""
+
+    def __init__(self, lp: LabelledLp, of: list[int], to: list[int]) -> None:
+        row = len(lp.rows)
+        index = np.array([*of, *to], dtype=np.int32)
+        label = ("ratio_held",)
+        self.row, self.of, self.to = row, of, to
+        self.lp = replace(
+            lp,
+            rows=(*lp.rows, label),
+            starts=np.append(lp.starts, lp.starts[-1] + len(index)).astype(np.int32),
+            index=np.append(lp.index, index).astype(np.int32),
+            value=np.append(lp.value, np.array([1.0] * len(of) + [-1.0] * len(to))),
+            row_low=np.append(lp.row_low, 0.0),
+            row_high=np.append(lp.row_high, 0.0),
+            row_at={**lp.row_at, label: row},
+        )
+        self.solver = Solver(self.lp)
+        self.solver.highs.setOptionValue("simplex_strategy", 0)
+        self.basis: object | None = None
+        self.solves = 0
+
+    def evaluate(self, ratio: float) -> Point | None:
+        """The best margin at a ratio and its slope, dual × Σ to; None when no plan has that ratio."""
+        for column in self.to:
+            self.solver.highs.changeCoeff(self.row, column, -ratio)
+        if self.basis is not None:
+            self.solver.highs.setBasis(self.basis)
+        self.solves += 1
+        outcome = self.solver.solve()
+        if outcome.status is Status.INFEASIBLE:
+            return None
+        if outcome.solution is None:
+            raise NeighbourError(f"a neighbour ended as {outcome.message}")
+        if self.basis is None:
+            self.basis = self.solver.highs.getBasis()
+        solution = outcome.solution
+        value = self.lp.value.copy()
+        value[len(value) - len(self.to) :] = -ratio
+        prove(replace(self.lp, value=value), solution)
+        slope = float(solution.row_dual[self.row]) * float(solution.x[self.to].sum())
+        return Point(ratio, solution.objective, slope)

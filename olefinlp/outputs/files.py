@@ -19,21 +19,22 @@ def write_whole(path: str | os.PathLike[str], write: Callable[[Path], None]) -> 
     """Write through a temporary file beside the target, then move it into place.
 
     `write` gets the temporary path. Raises `OutputError` when the target cannot be replaced; the
-    old file is left as it was and the temporary one is removed.
+    old file is left as it was and the temporary one is removed. A link is followed: the file it
+    points to is replaced, not the link.
     """
     target = Path(path)
+    real = Path(os.path.realpath(target))
     temporary: Path | None = None
     try:
-        if target.is_dir():
-            raise OutputError(f"{shown(target)} is a folder; name a file\nhint: for example {shown(target / 'plan.xlsx')}")
-        handle, name = tempfile.mkstemp(prefix=f".{target.name}.", suffix=".part", dir=target.parent or ".")
+        _refuse_what_is_no_file(target, real)
+        handle, name = tempfile.mkstemp(prefix=f".{real.name[:50]}.", suffix=".part", dir=real.parent)
         os.close(handle)
         temporary = Path(name)
         write(temporary)
-        _keep_mode(target, temporary)
+        _keep_mode(real, temporary)
         with temporary.open("rb+") as file:
             os.fsync(file.fileno())
-        os.replace(temporary, target)
+        os.replace(temporary, real)
         temporary = None
     except OSError as error:
         raise OutputError(_words(target, error)) from error
@@ -42,6 +43,14 @@ def write_whole(path: str | os.PathLike[str], write: Callable[[Path], None]) -> 
             with contextlib.suppress(OSError):
                 temporary.unlink()
     return target
+
+
+def _refuse_what_is_no_file(target: Path, real: Path) -> None:
+    """A folder, or a device such as /dev/null, which must not become a file."""
+    if real.is_dir():
+        raise OutputError(f"{shown(target)} is a folder; name a file\nhint: for example {shown(target / 'plan.xlsx')}")
+    if real.exists() and not real.is_file():
+        raise OutputError(f"{target} is a device, not a file that can be replaced; name a file")
 
 
 def _keep_mode(target: Path, temporary: Path) -> None:

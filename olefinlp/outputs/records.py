@@ -48,8 +48,15 @@ def plan_record(plan: Plan) -> dict[str, Any]:
 
 
 def _plain(row: dict[str, Any]) -> dict[str, Any]:
-    """A record that JSON can hold: no infinities."""
-    return {key: None if isinstance(value, float) and not math.isfinite(value) else value for key, value in row.items()}
+    """A record that JSON can hold."""
+    return {key: _value(value) for key, value in row.items()}
+
+
+def _value(value: Any) -> Any:
+    """A value without infinities and without a minus zero."""
+    if isinstance(value, float):
+        return value + 0.0 if math.isfinite(value) else None
+    return value
 
 
 def plan_json(plan: Plan) -> str:
@@ -68,7 +75,7 @@ def table_csv(table: Table) -> str:
     writer = csv.writer(text, lineterminator="\n")
     writer.writerow([f"{c.key} [{c.unit}]" if c.unit else c.key for c in table.columns])
     for row in table.rows:
-        writer.writerow(["" if row[c.key] is None else row[c.key] for c in table.columns])
+        writer.writerow([_value(row[c.key]) for c in table.columns])
     return text.getvalue()
 
 

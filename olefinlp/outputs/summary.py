@@ -66,8 +66,9 @@ def _margin(plan: Plan) -> list[str]:
         line(f"{main} made", [m / 1000 for m in made], "kt", 1)
     else:
         line(f"{main} made", made, "t", 1)
-    line("margin per tonne", [plan.margin_per_tonne(m) for m in columns], f"{plan.currency}/t {main}", 1)
-    if cents:
+    if any(made):
+        line("margin per tonne", [plan.margin_per_tonne(m) for m in columns], f"{plan.currency}/t {main}", 1)
+    if any(made) and cents:
         line("", [plan.margin_per_lb(m) for m in columns], f"{cents}/lb {main}", 2)
     text = [row.rstrip() for row in _left_unit(lines)]
     if len(months) > 1 and plan.quantities.case.stocks:

@@ -11,8 +11,8 @@ from olefinlp.answers.tables import Record, Table
 from olefinlp.outputs.files import write_whole
 from olefinlp.outputs.workbook_book import Book
 from olefinlp.outputs.workbook_money import write_feeds, write_money, write_prices, write_slate
-from olefinlp.outputs.workbook_overview import NAME as OVERVIEW
 from olefinlp.outputs.workbook_overview import write_overview
+from olefinlp.outputs.workbook_page import NAME as OVERVIEW
 from olefinlp.outputs.workbook_tables import cell_range, grid_of, write_table
 
 if TYPE_CHECKING:
@@ -27,7 +27,11 @@ def write_workbook(plan: Plan, path: str | os.PathLike[str]) -> Path:
     Raises `OutputError` when the file cannot be written; what was there before is then still there.
     """
     content = workbook_bytes(plan)
-    return write_whole(path, lambda temporary: temporary.write_bytes(content) and None)
+
+    def write(temporary: Path) -> None:
+        temporary.write_bytes(content)
+
+    return write_whole(path, write)
 
 
 def workbook_bytes(plan: Plan) -> bytes:

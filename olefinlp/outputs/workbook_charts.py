@@ -94,7 +94,7 @@ def _series(ranges: Ranges, column: int, shade: str) -> dict[str, Any]:
         "categories": ranges.categories(),
         "values": ranges.values(column),
         "fill": {"color": shade},
-        "border": {"color": "#FFFFFF", "width": 0.5},
+        "border": {"color": "#FFFFFF", "width": 0.25},
     }
 
 

@@ -2,80 +2,41 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+import textwrap
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 from olefinlp.answers.limits import binding
 from olefinlp.answers.money import GROUPS
-from olefinlp.answers.tables import Record
+from olefinlp.outputs.workbook_blocks import (
+    LOAD_ROWS,
+    load_shares,
+    top_limits,
+    write_feed_block,
+    write_limits,
+    write_loads,
+    write_slate_block,
+)
 from olefinlp.outputs.workbook_book import Book, cell, put, put_formula
-from olefinlp.outputs.workbook_charts import Ranges, load_chart, quantity_chart
 from olefinlp.outputs.workbook_money import FIXED, MoneySheets
+from olefinlp.outputs.workbook_page import ROW_PIXELS, Page
 from olefinlp.outputs.workbook_tables import number_format
 
 if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
 
-NAME = "Overview"
-TOP_LIMITS = 8
-WORTHS = "Limits that bind, and what one more unit is worth"
 AGREES_WITHIN = 0.01
 """Thousands of the currency between the margin of the sheet and that of the solver."""
 
 KG_PER_LB = 0.45359237
-ALL_MONTHS = "All months"
-ROW_PIXELS = 18
-CHART_WIDTH, FEED_ROWS, SLATE_ROWS, LOAD_ROWS = 620, 13, 15, 17
-PAGE_ROWS = 31
-"""Rows of feeds and products that leave room for the loads on the same page."""
+PAGE_ROWS, LINE_LENGTH = 47, 130
+"""Rows of a printed page, and letters across it, about."""
 
-SEVERAL = 1.4
-"""Charts of several months are taller by this; their page is wider, so that it holds more rows too."""
-
-
-@dataclass
-class Page:
-    """The sheet while it is written from top to bottom; `row` is the next free one, from 0."""
-
-    book: Book
-    sheet: Any
-    plan: Plan
-    money: MoneySheets
-    row: int = 0
-
-    @property
-    def months(self) -> tuple[str, ...]:
-        """Months of the plan."""
-        return self.plan.quantities.case.months
-
-    @property
-    def headings(self) -> tuple[str, ...]:
-        """Headings of the columns of numbers: the months, and all of them when there are several."""
-        return (*self.months, ALL_MONTHS) if len(self.months) > 1 else self.months
-
-    def tall(self, rows: int) -> int:
-        """Rows of a chart or a page, more of them when there are several months."""
-        return round(rows * SEVERAL) if len(self.months) > 1 else rows
-
-    @property
-    def money_unit(self) -> str:
-        """Unit of amounts."""
-        return f"k{self.plan.currency}"
-
-    def block(self, title: str, columns: Sequence[str], texts: int = 2) -> int:
-        """The title and header row of a small table; gives the header's row."""
-        self.row += 1
-        put(self.sheet, self.row, 0, title, self.book.style("block"))
-        for at, text in enumerate(columns):
-            put(self.sheet, self.row + 1, at, text, self.book.style("header", *(["right"] if at >= texts else [])))
-        self.row += 2
-        return self.row - 1
-
-    def label(self, text: str, unit: str = "", *words: str) -> None:
-        """The first two cells of a row."""
-        put(self.sheet, self.row, 0, text, self.book.style(*words))
-        self.sheet.write_string(self.row, 1, unit, self.book.style(*words))
+READING = (
+    "Quantities are the solver's values; every amount is a formula of a quantity",
+    "and a cell of the sheet Prices. Changing a filled cell there prices this same",
+    "plan again, it does not plan again; the check below then does not agree.",
+)
 
 
 def write_overview(book: Book, sheet: Any, plan: Plan, money: MoneySheets) -> None:
@@ -86,14 +47,15 @@ def write_overview(book: Book, sheet: Any, plan: Plan, money: MoneySheets) -> No
     _facts(page)
     margin_row = _key_figures(page)
     _check(page, margin_row)
-    _limits(page)
+    write_limits(page)
     _texts(page)
     breaks = [page.row]
-    _feeds(page)
-    _slate(page)
-    if page.row - breaks[0] > page.tall(PAGE_ROWS):
+    write_feed_block(page)
+    write_slate_block(page)
+    loads = load_shares(page)
+    if page.row - breaks[0] + max(len(loads) + 3, page.tall(LOAD_ROWS)) > page.tall(PAGE_ROWS):
         breaks.append(page.row)
-    _loads(page)
+    write_loads(page, loads)
     _widths(page)
     sheet.set_h_pagebreaks(breaks)
 
@@ -112,6 +74,8 @@ def _facts(page: Page) -> None:
     for page.row, (name, value) in enumerate(facts, 1):
         put(page.sheet, page.row, 0, name, page.book.style("bold"))
         put(page.sheet, page.row, 1, value)
+    for row, line in enumerate(READING, 1):
+        put(page.sheet, row, 5, line, page.book.style("note"))
     page.row += 1
 
 
@@ -200,176 +164,24 @@ def _check(page: Page, margin_row: int) -> None:
     put(page.sheet, page.row, 2, solver, page.book.style(number_format("money", [solver])))
     text = f'=IF(ABS({total}-{cell(page.row, 2)})<{AGREES_WITHIN},"agrees","DOES NOT AGREE")'
     put_formula(page.sheet, page.row, 3, text, "agrees", page.book.style("bold", "indent"))
-    put(
-        page.sheet,
-        page.row,
-        5,
-        "After a price is changed, the figures above are those of this same plan at that price.",
-        page.book.style("note"),
-    )
     alarm = {"type": "cell", "criteria": "==", "value": '"DOES NOT AGREE"', "format": page.book.style("alarm")}
     page.sheet.conditional_format(page.row, 3, page.row, 3, alarm)
     page.row += 1
 
 
-def _limits(page: Page) -> None:
-    """Limits that bind, those with the largest part in the margin; every one is on its own sheet."""
-    found = binding(page.plan.limits)
-    shown = top_limits(page.plan, found)
-    if len(page.months) > 1:
-        _limits_by_month(page, shown)
-    else:
-        _limits_of_month(page, [records[0] for records in shown.values()])
-    everything = {(row["limit"], row["state"]) for row in found}
-    rest = f"{len(shown)} of {len(everything)} limits that bind, those with the largest part in the margin. "
-    text = (rest if len(everything) > len(shown) else "") + page.plan.limits.note
-    put(page.sheet, page.row, 0, text if found else "No limit is worth anything.", page.book.style("note"))
-    page.row += 1
-
-
-def _limits_of_month(page: Page, shown: Sequence[Record]) -> None:
-    page.block(WORTHS, ("Limit", "Month", "State", "Worth", "", "Plan"), texts=3)
-    indent = page.book.style("indent")
-    for at, text in ((4, "Worth unit"), (6, "Unit")):
-        put(page.sheet, page.row - 1, at, text, page.book.style("header", "indent"))
-    worths = page.book.style(number_format("price", [row["worth"] for row in shown]))
-    for row in shown:
-        for at, key in enumerate(("limit", "month", "state")):
-            put(page.sheet, page.row, at, row[key])
-        put(page.sheet, page.row, 3, row["worth"], worths)
-        put(page.sheet, page.row, 4, row["worth_unit"], indent)
-        put(page.sheet, page.row, 5, row["value"], page.book.style(number_format("quantity", [row["value"]])))
-        put(page.sheet, page.row, 6, row["unit"], indent)
-        page.row += 1
-
-
-def _limits_by_month(page: Page, shown: dict[tuple[str, str], list[Record]]) -> None:
-    page.block(WORTHS, ("Limit", "Worth unit", *page.months))
-    worths = page.book.style(number_format("price", [row["worth"] for records in shown.values() for row in records]))
-    for (limit, state), records in shown.items():
-        page.label(f"{limit}, {state}", records[0]["worth_unit"])
-        for row in records:
-            put(page.sheet, page.row, 2 + page.months.index(row["month"]), row["worth"], worths)
-        page.row += 1
-
-
-def top_limits(plan: Plan, found: Sequence[Record]) -> dict[tuple[str, str], list[Record]]:
-    """The limits with the largest |rate × limit| over the months, by name and state, the largest first."""
-    limits = {id(record): limit for record, limit in zip(plan.limits.rows, plan.quantities.case.limits.values(), strict=True)}
-    parts: dict[tuple[str, str], float] = {}
-    records: dict[tuple[str, str], list[Record]] = {}
-    for record in found:
-        limit, key = limits[id(record)], (record["limit"], record["state"])
-        sides = (limit.low, limit.high) if record["state"] == "at minimum" else (limit.high, limit.low)
-        bound = sides[0] if sides[0] is not None else sides[1]
-        parts[key] = parts.get(key, 0.0) + abs(record["rate"] / limit.worth_scale * (bound or 0.0))
-        records.setdefault(key, []).append(record)
-    best = sorted(parts, key=lambda key: -parts[key])[:TOP_LIMITS]
-    return {key: records[key] for key in best}
-
-
-def _matrix(page: Page, title: str, rows: dict[tuple[str, str], dict[str, float]], total: bool = True) -> Ranges:
-    """Items by month, as values of the plan; gives where they stand. Keys are (item, unit)."""
-    several = total and len(page.months) > 1
-    header = page.block(title, ("", "Unit", *page.months, *([ALL_MONTHS] if several else [])))
-    first = page.row
-    numbers = [value for by_month in rows.values() for value in by_month.values()]
-    for (item, unit), by_month in rows.items():
-        page.label(item, unit)
-        style = page.book.style(number_format("share" if unit == "%" else "quantity", numbers))
-        for column, month in enumerate(page.months, 2):
-            put(page.sheet, page.row, column, by_month.get(month), style)
-        if several:
-            put(page.sheet, page.row, 2 + len(page.months), sum(by_month.values()), style)
-        page.row += 1
-    return Ranges(NAME, header, first, page.row - 1, 0, tuple(range(2, 2 + len(page.months))))
-
-
-def _gathered(
-    rows: Sequence[Record], item: str, value: str, unit: Callable[[Record], str]
-) -> dict[tuple[str, str], dict[str, float]]:
-    """Sums of a table by item and month."""
-    found: dict[tuple[str, str], dict[str, float]] = {}
-    for row in rows:
-        by_month = found.setdefault((row[item], unit(row)), {})
-        if row[value] is not None:
-            by_month[row["month"]] = by_month.get(row["month"], 0.0) + row[value]
-    return found
-
-
-def _feeds(page: Page) -> None:
-    rows = _gathered(page.plan.feeds.rows, "feed", "bought", lambda _: "kt")
-    top = page.row
-    ranges = _matrix(page, "Feeds bought", rows)
-    _place(page, top, quantity_chart(page.book, ranges, _leader("Feed bought, kt", rows), "kt"), FEED_ROWS)
-
-
-def _slate(page: Page) -> None:
-    """Products sold; what is sold as heat stands last and is left out of the chart of tonnes."""
-    rows = _gathered(page.plan.slate.rows, "outlet", "quantity", lambda row: str(row["unit"]))
-    rows = dict(sorted(rows.items(), key=lambda entry: entry[0][1] != "kt"))
-    tonnes = {key: value for key, value in rows.items() if key[1] == "kt"}
-    top = page.row
-    ranges = _matrix(page, "Products sold", rows)
-    if tonnes:
-        ranges = Ranges(NAME, ranges.header, ranges.first, ranges.first + len(tonnes) - 1, 0, ranges.months)
-        _place(page, top, quantity_chart(page.book, ranges, _leader("Products sold, kt", tonnes), "kt"), SLATE_ROWS)
-
-
-def _leader(title: str, rows: dict[tuple[str, str], dict[str, float]]) -> str:
-    """A title that says the sum and the largest part."""
-    sums = {item: sum(by_month.values()) for (item, _), by_month in rows.items()}
-    total = sum(sums.values())
-    if total <= 0:
-        return f"{title}: nothing"
-    largest = max(sums, key=lambda item: sums[item])
-    return f"{title}: {total:,.4g} in all, {largest} {sums[largest] / total:.0%}"
-
-
-def _loads(page: Page) -> None:
-    """Furnace groups and recovery units: how much of their maximum is used."""
-    rows = _gathered(page.plan.furnace_groups.rows, "group", "share", lambda _: "%")
-    rows |= _gathered(page.plan.recovery.rows, "unit", "share", lambda _: "%")
-    rows = {key: by_month for key, by_month in rows.items() if by_month}
-    if not rows:
-        return
-    top = page.row
-    ranges = _matrix(page, "Load of furnaces and recovery units", rows, total=False)
-    limit = 2 + len(page.months)
-    put(page.sheet, ranges.header, limit, "Maximum", page.book.style("header", "right"))
-    for row in range(ranges.first, ranges.last + 1):
-        put(page.sheet, row, limit, 1.0, page.book.style("0%"))
-    full = sum(max(by_month.values()) > 0.9995 for by_month in rows.values())
-    title = f"Load, % of maximum (the line is 100 %): {full} of {len(rows)} are full" + (
-        " in some month" if len(page.months) > 1 else ""
-    )
-    _place(page, top, load_chart(page.book, ranges, title, limit), LOAD_ROWS)
-
-
-def _place(page: Page, top: int, chart: Any, rows: int) -> None:
-    """Put a chart right of the table that starts below row `top`, and go on below both."""
-    high = max(page.row - top, page.tall(rows))
-    chart.set_size({"width": CHART_WIDTH, "height": (high - 1) * ROW_PIXELS - 8})
-    page.sheet.insert_chart(top + 1, 3 + len(page.headings), chart, {"x_offset": 6, "y_offset": 2, "object_position": 2})
-    page.row = max(page.row, top + high)
-
-
 def _texts(page: Page) -> None:
-    """Warnings of this plan, what is always to be kept in mind, and how to read the workbook."""
+    """Warnings of this plan, and what is always to be kept in mind."""
     from olefinlp.answers.audit import CAUTIONS
 
     warnings = [f"{w.place}  {w.path}: {w.message}" + (f" ({w.hint})" if w.hint else "") for w in page.plan.warnings]
-    reading = (
-        "Quantities are the solver's values; every amount is a formula of a quantity and a cell of the sheet Prices.",
-        "Filled cells on Prices and Money may be changed; that prices this same plan again, it does not plan again.",
-    )
-    for title, lines in (("Warnings", warnings), ("To be kept in mind", CAUTIONS), ("How to read this workbook", reading)):
+    for title, lines in (("Warnings", warnings), ("To be kept in mind", CAUTIONS)):
         if lines:
             page.row += 1
             put(page.sheet, page.row, 0, title, page.book.style("block"))
-            for page.row, line in enumerate(lines, page.row + 1):
-                put(page.sheet, page.row, 0, line)
             page.row += 1
+            for line in (part for text in lines for part in textwrap.wrap(text, LINE_LENGTH)):
+                put(page.sheet, page.row, 0, line)
+                page.row += 1
 
 
 def _widths(page: Page) -> None:

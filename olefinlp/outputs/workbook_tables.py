@@ -64,9 +64,9 @@ def cell_range(grid: Grid, key: str) -> str:
 
 
 def number_format(kind: str, values: Sequence[Any]) -> str:
-    """How the numbers of a column are shown; small ones get more decimals.
+    """How the numbers of a column are shown; when most are small, all get more decimals.
 
-    >>> number_format("quantity", [162.4, 0.2]), number_format("quantity", [0.0272])
+    >>> number_format("quantity", [162.4, 0.02]), number_format("quantity", [0.0272])
     ('#,##0.00', '0.000000')
     """
     largest = size_of(values)
@@ -78,7 +78,8 @@ def number_format(kind: str, values: Sequence[Any]) -> str:
         return "0"
     if kind == "number":
         return "0.0E+00" if 0 < largest < 0.01 else "General"
-    return "#,##0.00" if largest >= 0.1 or largest == 0 else "0.000000"
+    sizes = sorted(abs(v) for v in values if v and isinstance(v, int | float))
+    return "0.000000" if sizes and sizes[len(sizes) // 2] < 0.1 else "#,##0.00"
 
 
 def size_of(values: Sequence[Any]) -> float:
@@ -111,7 +112,7 @@ def write_table(
         values = [row[column.key] for row in rows]
         width = width_of(column, values)
         room = width - (1 if column.kind == "text" else FILTER_ARROW)
-        lines = max(lines, len(textwrap.wrap(column.heading, room, break_long_words=False)))
+        lines = max(lines, len(textwrap.wrap(column.heading, int(room), break_long_words=False)))
         style = _style_words(column, values)
         if "wrap" in style:
             wrapped[column.key] = width

@@ -1,0 +1,245 @@
+"""Exact step curves: what is bought or sold against one price, margin and worth against one limit."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from olefinlp.answers.answer import Answer, Chart
+from olefinlp.answers.tables import Column, Record, Table
+from olefinlp.inputs.case import Case, Limit
+from olefinlp.inputs.findings import near_name
+from olefinlp.inputs.prices import item_name
+from olefinlp.lp.compile import Floats, PriceMap
+from olefinlp.lp.neighbours import Neighbours
+from olefinlp.lp.steps import Evaluate, Point, Step, trace
+
+if TYPE_CHECKING:
+    from olefinlp.answers.plan import Plan
+
+PRICE_SPAN, LIMIT_SPAN = 0.3, 0.5
+"""How far a curve goes on each side of today, as a share, when no range is given."""
+
+
+@dataclass(frozen=True)
+class Axis:
+    """What a curve runs along: one number as people write it, and what it does to the program.
+
+    `factor` turns the written number into the plan's, `sign` turns a slope into the quantity shown.
+    """
+
+    item: str
+    today: float
+    unit: str
+    factor: float
+    evaluate: Evaluate
+    is_price: bool
+    slope_unit: str
+    slope_scale: float
+
+
+def step_curve(plan: Plan, item: str, low: float | None = None, high: float | None = None, month: str | None = None) -> Answer:
+    """The exact curve of one price or limit, by tangent intersection; about 2n + 1 solves for n steps.
+
+    `item` is a path as written in the files: `feeds.ethane.contract` or `outlets.x` (price),
+    `feeds.ethane.contract.max`, `outlets.x.min`, `recovery_units.x.capacity`,
+    `furnace_groups.x.hours`, `limits.x.max`, `utilities.x.max`, `stocks.x.max` … (limit). `low` and
+    `high` are in the unit in which it is written. Several months move together unless one is named.
+
+    Raises `ValueError` for an unknown item (with the nearest name) or an empty range.
+    """
+    axis = _axis(plan, item, month)
+    span = PRICE_SPAN if axis.is_price else LIMIT_SPAN
+    size = abs(axis.today) or 1.0
+    start = (axis.today - span * size if low is None else low) * axis.factor
+    stop = (axis.today + span * size if high is None else high) * axis.factor
+    if not axis.is_price:
+        start = max(start, 0.0)
+    if not start < stop:
+        raise ValueError(f"the range {start / axis.factor:g} to {stop / axis.factor:g} {axis.unit} is empty")
+    start, stop = _possible(axis, start, stop)
+    money = sum(abs(line.amount) for line in plan.lines)
+    steps = trace(axis.evaluate, start, stop, money)
+    return _answer(plan, axis, steps)
+
+
+def _axis(plan: Plan, item: str, month: str | None) -> Axis:
+    case = plan.quantities.case
+    if month is not None and month not in case.months:
+        raise ValueError(f"`{month}` is not a period of this plan; {near_name(month, case.months)}")
+    months = case.months if month is None else (month,)
+    name = item_name(item.split("."))
+    if (name, months[0]) in case.prices:
+        return _price_axis(plan, name, months)
+    paths = limit_paths(case)
+    if item in paths:
+        return _limit_axis(plan, item, [pair for pair in paths[item] if pair[0].month in months])
+    known = sorted({price for price, _ in case.prices} | set(paths))
+    raise ValueError(
+        f"`{item}` is no price or limit of this plan; {near_name(item, known) or 'see the sheets Prices and Limits'}"
+    )
+
+
+def limit_paths(case: Case) -> dict[str, list[tuple[Limit, bool]]]:
+    """Path in the files → the limits that it writes, and whether it is their minimum."""
+    names = {
+        "furnace_hours": ("furnace_groups", "hours", ""),
+        "decoke_crew_hours": ("decoke_crews", "hours", ""),
+        "unit_load": ("recovery_units", "capacity", "min_load"),
+        "outlet": ("outlets", "max", "min"),
+        "named": ("limits", "max", "min"),
+        "trade": ("utilities", "max", "min"),
+        "conversion": ("conversions", "max", ""),
+        "stock": ("stocks", "max", "min"),
+        "end_stock": ("stocks", "", "end"),
+        "take_or_pay": ("", "", "take_or_pay"),
+        "purchase": ("", "max", "min"),
+    }
+    found: dict[str, list[tuple[Limit, bool]]] = {}
+    for limit in case.limits.values():
+        if limit.family not in names:
+            continue
+        head, high_word, low_word = names[limit.family]
+        body = limit.key[0]
+        if not head:
+            head = case.sources[body].kind
+        middle = "" if limit.family == "decoke_crew_hours" else f"{body}."
+        if limit.high is not None and high_word:
+            found.setdefault(f"{head}.{middle}{high_word}", []).append((limit, False))
+        if limit.low is not None and low_word:
+            found.setdefault(f"{head}.{middle}{low_word}", []).append((limit, True))
+    return found
+
+
+def price_derivatives(case: Case, item: str, months: tuple[str, ...]) -> dict[tuple[str, str], float]:
+    """How much each effective price moves with one: 1 for itself, `times` along prices that lean on it."""
+    moved: dict[tuple[str, str], float] = {}
+    for month in months:
+        moved[item, month] = 1.0
+        waiting = [item]
+        while waiting:
+            base = waiting.pop()
+            for (name, when), price in case.prices.items():
+                if when == month and price.of == base:
+                    moved[name, month] = price.times * moved[base, month]
+                    waiting.append(name)
+    return moved
+
+
+def cost_direction(case: Case, prices: PriceMap, item: str, months: tuple[str, ...], size: int) -> Floats:
+    """What one more unit of an effective price adds to the cost of each column."""
+    direction = np.zeros(size)
+    for key, times in price_derivatives(case, item, months).items():
+        if key in prices:
+            columns, coefficients = prices[key]
+            per_unit = 1e-3 if case.prices[key].unit_used == case.currency else 1.0
+            np.add.at(direction, columns, times * per_unit * coefficients)
+    return direction
+
+
+def _price_axis(plan: Plan, item: str, months: tuple[str, ...]) -> Axis:
+    case, neighbours = plan.quantities.case, plan.neighbours
+    price = case.prices[item, months[0]]
+    today = price.value
+    direction = cost_direction(case, plan.price_map, item, months, len(plan.lp.columns))
+
+    def evaluate(value: float) -> Point | None:
+        solution = neighbours.solve(cost=plan.lp.cost + (value - today) * direction)
+        return None if solution is None else Point(value, solution.objective, float(direction @ solution.x))
+
+    factor, unit = (1.0, price.unit_used) if price.of else (price.factor, price.unit)
+    quantity = {"GJ LHV": "TJ LHV", "MWh": "GWh", "t": "kt", "t held": "kt held"}.get(price.unit_used.partition("/")[2], "")
+    scale = 1000.0 if price.unit_used == case.currency else 1.0
+    return Axis(item, today / factor, unit, factor, evaluate, True, quantity, scale)
+
+
+def _limit_axis(plan: Plan, item: str, limits: list[tuple[Limit, bool]]) -> Axis:
+    neighbours = plan.neighbours
+    first, low_side = limits[0]
+    written = first.low if low_side else first.high
+    rows = {neighbours.lp.row_at[f"{limit.family}_limit", *limit.key]: limit for limit, _ in limits if _there(neighbours, limit)}
+
+    def evaluate(value: float) -> Point | None:
+        bounds = {}
+        for row, limit in rows.items():
+            own = value * first.scale / limit.scale  # months of other lengths: the same rate
+            low, high = float(neighbours.lp.row_low[row]), float(neighbours.lp.row_high[row])
+            bounds[row] = (own, high) if low_side else (low, own)
+            if bounds[row][0] > bounds[row][1]:
+                return None
+        solution = neighbours.solve(rows=bounds)
+        if solution is None:
+            return None
+        clip = min if low_side else max  # where both sides meet, only a dual of this side's sign is this side's
+        slope = sum(clip(float(solution.row_dual[row]), 0.0) * first.scale / limit.scale for row, limit in rows.items())
+        return Point(value, solution.objective, slope)
+
+    currency = plan.currency
+    today = (written or 0.0) * first.scale
+    return Axis(item, today, first.unit, 1 / first.scale, evaluate, False, f"{currency}/{first.worth_unit}", first.worth_scale)
+
+
+def _there(neighbours: Neighbours, limit: Limit) -> bool:
+    return (f"{limit.family}_limit", *limit.key) in neighbours.lp.row_at
+
+
+def _possible(axis: Axis, start: float, stop: float) -> tuple[float, float]:
+    """The part of the range that has a plan, found by halving from today's value."""
+    inside = min(max(axis.today * axis.factor, start), stop)
+    if axis.evaluate(inside) is None:
+        raise ValueError("no plan is possible anywhere near today's value in this range")
+    return _edge(axis, inside, start), _edge(axis, inside, stop)
+
+
+def _edge(axis: Axis, inside: float, wanted: float) -> float:
+    if axis.evaluate(wanted) is not None:
+        return wanted
+    good, bad = inside, wanted
+    for _ in range(40):
+        middle = (good + bad) / 2
+        good, bad = (middle, bad) if axis.evaluate(middle) is not None else (good, middle)
+    return good
+
+
+def _answer(plan: Plan, axis: Axis, steps: list[Step]) -> Answer:
+    currency = plan.currency
+    name = "Quantity that it prices" if axis.is_price else "Worth of one more unit"
+    columns = (
+        Column("low", f"From, {axis.unit}", kind="price"),
+        Column("high", f"To, {axis.unit}", kind="price"),
+        Column("level", name, axis.slope_unit, "quantity"),
+        Column("margin_low", "Margin at the start", f"k{currency}", "money"),
+        Column("margin_high", "Margin at the end", f"k{currency}", "money"),
+        Column("today", "Today"),
+    )
+    rows: list[Record] = [
+        {
+            "low": step.low / axis.factor,
+            "high": step.high / axis.factor,
+            "level": abs(step.slope) * axis.slope_scale,
+            "margin_low": step.value_low,
+            "margin_high": step.value_high,
+            "today": "here" if step.low / axis.factor <= axis.today <= step.high / axis.factor else "",
+        }
+        for step in steps
+    ]
+    note = "Exact: every step is where the plan changes. Other prices and limits are held. At a step the value is not one number."
+    table = Table("curve", f"Steps of {axis.item}", columns, rows, note)
+    chart = Chart(
+        "steps", f"{name} against {axis.item}", "low", "high", "level", f"{axis.unit}", f"{axis.slope_unit}", axis.today
+    )
+    return Answer("curve", f"Curve of {axis.item}", (table,), (_sentence(axis, rows),), note, chart)
+
+
+def _sentence(axis: Axis, rows: list[Record]) -> str:
+    here = next((i for i, row in enumerate(rows) if row["today"]), 0)
+    row = rows[here]
+    what = f"{row['level']:,.4g} {axis.slope_unit}"
+    text = f"{axis.item}: today {axis.today:,.4g} {axis.unit}; between {row['low']:,.4g} and {row['high']:,.4g} it is {what}"
+    if here + 1 < len(rows):
+        text += f", above that {rows[here + 1]['level']:,.4g}"
+    if here > 0:
+        text += f", below that {rows[here - 1]['level']:,.4g}"
+    return f"{text}; {len(rows)} steps between {rows[0]['low']:,.4g} and {rows[-1]['high']:,.4g} {axis.unit}."
