@@ -15,9 +15,12 @@ from typing import TYPE_CHECKING, Annotated, Any, NoReturn
 import typer
 
 if TYPE_CHECKING:
+    from olefinlp.answers.answer import Answer
     from olefinlp.answers.plan import NoPlan, Plan
     from olefinlp.inputs.findings import Finding, InputError
     from olefinlp.inputs.scenario import Scenario
+
+    Writer = Callable[[Plan, Path, tuple[Answer, ...]], object]
 
 EXIT_OUTPUT, EXIT_INPUT, EXIT_FAILED = 1, 2, 6
 
@@ -62,7 +65,7 @@ def plan(
         str | None, typer.Option("--json", metavar="FILE", help="Also write the plan as JSON; - for standard output.")
     ] = None,
     csv_folder: Annotated[Path | None, typer.Option("--csv", metavar="DIR", help="Also write every table as csv.")] = None,
-    quick: Annotated[bool, typer.Option("--quick", help="The plan and its workbook only, no further answers.")] = False,  # noqa: ARG001
+    quick: Annotated[bool, typer.Option("--quick", help="The plan and its workbook only, no further answers.")] = False,
 ) -> None:
     """Make the best plan, prove it, print a summary and write a workbook."""
     import pyomo.environ  # noqa: F401  # first: it is three times slower to load after scipy
@@ -75,16 +78,17 @@ def plan(
     if scenario is None:
         _note(f"no scenario given: planning the invented demo, {_shown(path)}")
     made = _make_plan(path, price_case, json_file)
+    answers = () if quick else _answers(made)
     if json_file == "-":
-        _data(plan_json(made))
+        _data(plan_json(made, answers))
     else:
-        typer.echo(summary(made))
-    targets: list[tuple[Path, Callable[[Plan, Path], object]]] = [(output or Path(f"{path.stem}_plan.xlsx"), write_workbook)]
+        typer.echo(summary(made, answers))
+    targets: list[tuple[Path, Writer]] = [(output or Path(f"{path.stem}_plan.xlsx"), write_workbook)]
     if json_file and json_file != "-":
         targets.append((Path(json_file), write_json))
     if csv_folder:
         targets.append((csv_folder, write_csv))
-    _write_all(made, targets)
+    _write_all(made, answers, targets)
 
 
 @app.command()
@@ -126,6 +130,54 @@ def export(
 
 
 @app.command()
+def curve(
+    scenario: Annotated[Path, typer.Argument(help="Scenario file (yaml).")],
+    item: Annotated[
+        str,
+        typer.Argument(
+            help="A price or limit by its path in the files (feeds.naphtha.spot, recovery_units.x.capacity), "
+            "or two cuts as propylene/ethylene for their ratio."
+        ),
+    ],
+    low: Annotated[float | None, typer.Option("--from", help="Start, in the unit in which the item is written.")] = None,
+    high: Annotated[float | None, typer.Option("--to", help="End, in the same unit.")] = None,
+    month: Annotated[str | None, typer.Option(help="Move the item in this month only; in all together if left out.")] = None,
+    price_case: PriceCase = None,
+    output: Annotated[Path | None, typer.Option("--output", "-o", help="Workbook with table and chart.")] = None,
+    csv_file: Annotated[Path | None, typer.Option("--csv", metavar="FILE", help="Table as csv.")] = None,
+) -> None:
+    """Follow the plan exactly along one price, one limit, or the ratio of two cuts."""
+    import pyomo.environ  # noqa: F401
+
+    from olefinlp.answers.curves import step_curve
+    from olefinlp.answers.ratio_curve import ratio_curve
+    from olefinlp.outputs.answer_files import answer_text, write_answer, write_answer_csv
+    from olefinlp.outputs.files import OutputError
+
+    made = _make_plan(scenario, price_case, None)
+    try:
+        if "/" in item:
+            of, _, to = item.partition("/")
+            if month is not None:
+                raise ValueError("a ratio is held over all months together: leave --month out")
+            found = ratio_curve(made, of, to, low, high)
+        else:
+            found = step_curve(made, item, low, high, month)
+    except ValueError as error:
+        _stop(str(error), EXIT_INPUT)
+    typer.echo(answer_text(found))
+    try:
+        if output:
+            write_answer(found, output)
+        if csv_file:
+            write_answer_csv(found, csv_file)
+    except OutputError as error:
+        _stop(str(error), EXIT_OUTPUT)
+    if output or csv_file:
+        _note("\nwritten: " + ", ".join(_shown(p) for p in (output, csv_file) if p))
+
+
+@app.command()
 def new(folder: Annotated[Path, typer.Argument(help="Folder to put the starter plants and scenarios in.")]) -> None:
     """Put the invented starter plants and scenarios into a folder, to change into your own."""
     from olefinlp.starter_files import DEFAULT, copy_starter
@@ -163,14 +215,14 @@ def schema(
     _note(f"written: {_shown(output)}")
 
 
-def _write_all(made: Plan, targets: list[tuple[Path, Callable[[Plan, Path], object]]]) -> None:
+def _write_all(made: Plan, answers: tuple[Answer, ...], targets: list[tuple[Path, Writer]]) -> None:
     """Write each output; one that cannot be written does not hold back the others."""
     from olefinlp.outputs.files import OutputError
 
     written, failed = [], []
     for target, write in targets:
         try:
-            write(made, target)
+            write(made, target, answers)
             written.append(_shown(target))
         except OutputError as error:
             failed.append(str(error))
@@ -178,6 +230,12 @@ def _write_all(made: Plan, targets: list[tuple[Path, Callable[[Plan, Path], obje
         _note(f"\nwritten: {', '.join(written)}")
     if failed:
         _stop("\n".join(failed), EXIT_OUTPUT)
+
+
+def _answers(made: Plan) -> tuple[Answer, ...]:
+    from olefinlp.answers.default import default_answers
+
+    return default_answers(made)
 
 
 def _scenario_path(path: Path | None) -> Path:

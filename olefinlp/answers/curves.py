@@ -214,11 +214,12 @@ def _answer(plan: Plan, axis: Axis, steps: list[Step]) -> Answer:
         Column("margin_high", "Margin at the end", f"k{currency}", "money"),
         Column("today", "Today"),
     )
+    noise = 1e-9 * max(abs(step.slope) for step in steps)
     rows: list[Record] = [
         {
             "low": step.low / axis.factor,
             "high": step.high / axis.factor,
-            "level": abs(step.slope) * axis.slope_scale,
+            "level": abs(step.slope) * axis.slope_scale if abs(step.slope) > noise else 0.0,
             "margin_low": step.value_low,
             "margin_high": step.value_high,
             "today": "here" if step.low / axis.factor <= axis.today <= step.high / axis.factor else "",

@@ -55,7 +55,7 @@ def feeds_table(q: Quantities) -> Table:
                         "shortfall": q.value("shortfall", source, month) if data.take_or_pay and step == 1 else None,
                         "price_written": price.text,
                         "price": price.value,
-                        "worth": _worth_at_gate(q, source, step, month),
+                        "worth": worth_at_gate(q, source, step, month),
                         "cost": bought * price.value,
                     }
                 )
@@ -74,7 +74,7 @@ def _quality(q: Quantities, source: str, month: str) -> str:
     return ", ".join(f"{name} {value:g}" for name, value in quality.items())
 
 
-def _worth_at_gate(q: Quantities, source: str, step: int, month: str) -> float:
+def worth_at_gate(q: Quantities, source: str, step: int, month: str) -> float:
     """Value of one more tonne at the gate, whatever its source: the best use that there is for it.
 
     The shadow price of the feed balance alone is not enough for a feed that is not charged: it may

@@ -9,10 +9,12 @@ Base units: t, m3, kNm3, GJ (LHV), MWh, h, and whole units of the scenario's cur
 
 from __future__ import annotations
 
+import contextlib
 import functools
 import math
 import re
-from collections.abc import Mapping
+import sys
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Literal
@@ -93,9 +95,26 @@ class Quantity:
         return self.text
 
 
+@contextlib.contextmanager
+def _without(name: str) -> Iterator[None]:
+    """Hide a library from an import that would only look whether it is there.
+
+    pint looks for scipy, and where Pyomo is loaded that look alone loads all of scipy: 2 s.
+    """
+    if name in sys.modules:
+        yield
+        return
+    sys.modules[name] = None  # type: ignore[assignment]
+    try:
+        yield
+    finally:
+        sys.modules.pop(name, None)
+
+
 @functools.cache
 def _registry() -> object:
-    import pint
+    with _without("scipy"):
+        import pint
 
     return pint.UnitRegistry(str(Path(__file__).with_name("units.txt")), cache_folder=None)
 

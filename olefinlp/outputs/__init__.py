@@ -7,34 +7,35 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    from olefinlp.answers.answer import Answer
     from olefinlp.answers.plan import Plan
     from olefinlp.inputs.scenario import Scenario
 
 __all__ = ["write_csv", "write_json", "write_lp", "write_workbook"]
 
 
-def write_workbook(plan: Plan, path: str | os.PathLike[str]) -> Path:
+def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:
     """Write a plan as a workbook, whole or not at all.
 
     Quantities are values, every money cell is a live formula. Raises `OutputError`.
     """
     from olefinlp.outputs.workbook import write_workbook as write
 
-    return write(plan, path)
+    return write(plan, path, answers)
 
 
-def write_json(plan: Plan, path: str | os.PathLike[str]) -> Path:
+def write_json(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:
     """Write a plan as one JSON object, whole or not at all. Raises `OutputError`."""
     from olefinlp.outputs.records import write_json as write
 
-    return write(plan, path)
+    return write(plan, path, answers)
 
 
-def write_csv(plan: Plan, folder: str | os.PathLike[str]) -> list[Path]:
+def write_csv(plan: Plan, folder: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> list[Path]:
     """Write every table of a plan as csv into a folder. Raises `OutputError`."""
     from olefinlp.outputs.records import write_csv as write
 
-    return write(plan, folder)
+    return write(plan, folder, answers)
 
 
 def write_lp(scenario: Scenario, path: str | os.PathLike[str]) -> Path:

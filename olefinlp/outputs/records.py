@@ -10,17 +10,22 @@ import os
 from pathlib import Path
 from typing import Any
 
+from olefinlp.answers.answer import Answer
 from olefinlp.answers.plan import Plan
 from olefinlp.answers.tables import Table
 from olefinlp.outputs.files import OutputError, write_text
 
+Answers = tuple[Answer, ...]
 
-def plan_record(plan: Plan) -> dict[str, Any]:
+
+def plan_record(plan: Plan, answers: Answers = ()) -> dict[str, Any]:
     """A plan as plain values: margins in the currency itself, tables as lists of records.
 
     Keys: status, title, plant, currency, price_case, margin (before fixed cost, all months),
-    fixed_cost, months, then one list a table (feeds, furnaces, slate, limits …).
+    fixed_cost, months, then one list a table (feeds, furnaces, slate, limits …, and those of the
+    answers), and the sentences of the answers.
     """
+    tables = _tables(plan, answers)
     months = [
         {
             "month": p.name,
@@ -41,10 +46,16 @@ def plan_record(plan: Plan) -> dict[str, Any]:
         "margin": plan.margin,
         "fixed_cost": plan.fixed_cost(),
         "months": months,
-        "units": {t.name: {c.key: c.unit for c in t.columns if c.unit} for t in plan.tables()},
+        "units": {t.name: {c.key: c.unit for c in t.columns if c.unit} for t in tables},
         "warnings": [str(w) for w in plan.warnings],
+        "answers": [{"name": a.name, "title": a.title, "sentences": list(a.sentences), "note": a.note} for a in answers],
     }
-    return head | {table.name: [_plain(row) for row in table.rows] for table in plan.tables()}
+    return head | {table.name: [_plain(row) for row in table.rows] for table in tables}
+
+
+def _tables(plan: Plan, answers: Answers) -> list[Table]:
+    """The plan's tables, then those of its answers."""
+    return [*plan.tables(), *(table for answer in answers for table in answer.tables)]
 
 
 def _plain(row: dict[str, Any]) -> dict[str, Any]:
@@ -59,14 +70,14 @@ def _value(value: Any) -> Any:
     return value
 
 
-def plan_json(plan: Plan) -> str:
+def plan_json(plan: Plan, answers: Answers = ()) -> str:
     """A plan as one JSON object, ending in a line feed."""
-    return json.dumps(plan_record(plan), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+    return json.dumps(plan_record(plan, answers), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
 
 
-def write_json(plan: Plan, path: str | os.PathLike[str]) -> Path:
+def write_json(plan: Plan, path: str | os.PathLike[str], answers: Answers = ()) -> Path:
     """Write a plan as JSON, whole or not at all. Raises `OutputError`."""
-    return write_text(path, plan_json(plan))
+    return write_text(path, plan_json(plan, answers))
 
 
 def table_csv(table: Table) -> str:
@@ -79,11 +90,11 @@ def table_csv(table: Table) -> str:
     return text.getvalue()
 
 
-def write_csv(plan: Plan, folder: str | os.PathLike[str]) -> list[Path]:
+def write_csv(plan: Plan, folder: str | os.PathLike[str], answers: Answers = ()) -> list[Path]:
     """Write every table of a plan as a csv file into a folder, which is made if it is not there."""
     target = Path(folder)
     try:
         target.mkdir(parents=True, exist_ok=True)
     except OSError as error:
         raise OutputError(f"{target} is no folder that can be written to: {error.strerror or error}") from error
-    return [write_text(target / f"{table.name}.csv", table_csv(table)) for table in plan.tables()]
+    return [write_text(target / f"{table.name}.csv", table_csv(table)) for table in _tables(plan, answers)]

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
+from olefinlp.answers.answer import Answer
 from olefinlp.answers.audit import CAUTIONS
 from olefinlp.answers.limits import binding
 from olefinlp.answers.plan import Plan
@@ -11,18 +12,22 @@ from olefinlp.answers.tables import Record
 from olefinlp.inputs.findings import Finding
 from olefinlp.outputs.text import INDENT, aligned, names, number, significant
 
+MOST_SENTENCES = 12
+"""More sentences of one answer than these stand only in the workbook."""
+
 MANY_MONTHS = 7
 """From so many periods on, the printed tables show totals only."""
 
 
-def summary(plan: Plan) -> str:
-    """The summary of a plan, ready to print.
+def summary(plan: Plan, answers: tuple[Answer, ...] = ()) -> str:
+    """The summary of a plan, with the sentences of its answers if there are any, ready to print.
 
     >>> from olefinlp import make_plan, read_scenario
     >>> print(summary(make_plan(read_scenario("scenarios/thermal_cracker.yaml"))).splitlines()[0])
     Textbook thermal cracker, one hour
     """
     blocks = [_head(plan), _margin(plan), _feeds(plan), _furnaces(plan), _slate(plan), _limits(plan)]
+    blocks += [_answer(answer) for answer in answers]
     blocks += [_warnings(plan.warnings), _proof(plan), _cautions()]
     return "\n\n".join("\n".join(block) for block in blocks if block)
 
@@ -244,6 +249,13 @@ def _limits_by_month(plan: Plan, found: list[Record]) -> list[str]:
     for (limit, side, unit), values in worth.items():
         rows.append([f"{INDENT}{names(limit)} ({side})", *[significant(values.get(m)) for m in months], unit])
     return [line.removeprefix(INDENT) for line in _state_left(rows)]
+
+
+def _answer(answer: Answer) -> list[str]:
+    """An answer's sentences; of many the first, and how many more stand in the workbook."""
+    shown = [INDENT + sentence for sentence in answer.sentences[:MOST_SENTENCES]]
+    more = len(answer.sentences) - len(shown)
+    return [answer.title, *shown, *([f"{INDENT}and {more} more in the workbook"] if more > 0 else [])]
 
 
 def _warnings(warnings: tuple[Finding, ...]) -> list[str]:

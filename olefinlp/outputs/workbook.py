@@ -16,17 +16,18 @@ from olefinlp.outputs.workbook_page import NAME as OVERVIEW
 from olefinlp.outputs.workbook_tables import cell_range, grid_of, write_table
 
 if TYPE_CHECKING:
+    from olefinlp.answers.answer import Answer
     from olefinlp.answers.plan import Plan
 
 BINDING = ("at maximum", "at minimum", "fixed")
 
 
-def write_workbook(plan: Plan, path: str | os.PathLike[str]) -> Path:
+def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:
     """Write a plan as a workbook, whole or not at all; the same plan gives the same bytes.
 
     Raises `OutputError` when the file cannot be written; what was there before is then still there.
     """
-    content = workbook_bytes(plan)
+    content = workbook_bytes(plan, answers)
 
     def write(temporary: Path) -> None:
         temporary.write_bytes(content)
@@ -34,7 +35,7 @@ def write_workbook(plan: Plan, path: str | os.PathLike[str]) -> Path:
     return write_whole(path, write)
 
 
-def workbook_bytes(plan: Plan) -> bytes:
+def workbook_bytes(plan: Plan, answers: tuple[Answer, ...] = ()) -> bytes:
     """The whole file in memory."""
     book = Book(plan)
     sheets = {name: book.sheet(name) for name in sheet_names(plan)}

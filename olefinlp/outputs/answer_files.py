@@ -1,0 +1,147 @@
+"""One answer on its own: printed, as csv, or as a workbook with its chart."""
+
+from __future__ import annotations
+
+import io
+import os
+from pathlib import Path
+from typing import Any
+
+from olefinlp.answers.answer import Answer, Chart
+from olefinlp.answers.tables import Column, Table
+from olefinlp.outputs.files import write_text, write_whole
+from olefinlp.outputs.records import table_csv
+from olefinlp.outputs.text import INDENT, aligned, number, significant
+
+MOST_ROWS = 60
+FORMATS = {"quantity": "#,##0.00", "price": "#,##0.00", "money": "#,##0.0", "share": "0.0%", "hours": "#,##0", "count": "0"}
+INK, MARK = "#1F4E5F", "#B4581A"
+
+
+def answer_text(answer: Answer) -> str:
+    """An answer as people read it on a terminal: sentences, then the main table."""
+    lines = [answer.title, *(INDENT + sentence for sentence in answer.sentences), ""]
+    columns = [c for c in answer.table.columns if any(row[c.key] not in (None, "") for row in answer.table.rows)]
+    rows = [[c.heading for c in columns]]
+    rows += [[_cell(c, row[c.key]) for c in columns] for row in answer.table.rows[:MOST_ROWS]]
+    lines += aligned(rows, left=0)
+    if len(answer.table.rows) > MOST_ROWS:
+        lines.append(f"{INDENT}and {len(answer.table.rows) - MOST_ROWS} rows more: write them with --csv or --output")
+    return "\n".join([*lines, *([f"{INDENT}{answer.note}"] if answer.note else [])])
+
+
+def _cell(column: Column, value: Any) -> str:
+    if value is None or isinstance(value, str):
+        return value or ""
+    if column.kind == "share":
+        return f"{100 * value:.1f} %"
+    return number(value, 1) if column.kind == "money" else significant(value)
+
+
+def write_answer_csv(answer: Answer, path: str | os.PathLike[str]) -> Path:
+    """Write the main table of an answer as csv, whole or not at all. Raises `OutputError`."""
+    return write_text(path, table_csv(answer.table))
+
+
+def write_answer(answer: Answer, path: str | os.PathLike[str]) -> Path:
+    """Write an answer as a workbook with its chart, whole or not at all. Raises `OutputError`."""
+    content = answer_bytes(answer)
+
+    def write(temporary: Path) -> None:
+        temporary.write_bytes(content)
+
+    return write_whole(path, write)
+
+
+def answer_bytes(answer: Answer) -> bytes:
+    """The workbook of an answer; the same answer gives the same bytes."""
+    import datetime
+
+    import xlsxwriter
+
+    memory = io.BytesIO()
+    options = {"in_memory": True, "strings_to_formulas": False, "strings_to_numbers": False, "strings_to_urls": False}
+    book = xlsxwriter.Workbook(memory, options)
+    book.set_properties({"created": datetime.datetime(2000, 1, 1)})
+    styles = {kind: book.add_format({"num_format": code}) for kind, code in FORMATS.items()}
+    for position, table in enumerate(answer.tables):
+        sheet = book.add_worksheet(table.title[:31].translate({ord(c): " " for c in r"[]:*?/\'"}))
+        first = _write_words(book, sheet, answer) if position == 0 else 0
+        write_plain_table(book, sheet, table, styles, first)
+        if position == 0 and answer.chart:
+            _write_chart(book, sheet, answer, answer.chart, first + len(table.rows) + 3)
+    book.close()
+    return memory.getvalue()
+
+
+def _write_words(book: Any, sheet: Any, answer: Answer) -> int:
+    sheet.write_string(0, 0, answer.title, book.add_format({"bold": True, "font_size": 13}))
+    for row, sentence in enumerate(answer.sentences, 1):
+        sheet.write_string(row, 0, sentence)
+    sheet.write_string(len(answer.sentences) + 1, 0, answer.note, book.add_format({"italic": True, "font_color": "#555555"}))
+    return len(answer.sentences) + 3
+
+
+def write_plain_table(book: Any, sheet: Any, table: Table, styles: dict[str, Any], first: int) -> None:
+    """A table with one header row from row `first` on, frozen below it, printed on one page width."""
+    head = book.add_format({"bold": True, "text_wrap": True, "bottom": 1, "valign": "top"})
+    for j, column in enumerate(table.columns):
+        sheet.write_string(first, j, column.heading, head)
+        width = max([len(str(row[column.key] or "")) for row in table.rows if isinstance(row[column.key], str)], default=0)
+        sheet.set_column(j, j, min(max(width + 2, 14), 45))
+        for i, row in enumerate(table.rows, first + 1):
+            value = row[column.key]
+            if isinstance(value, (int, float)):
+                sheet.write_number(i, j, value + 0.0, styles.get(column.kind))
+            elif value:
+                sheet.write_string(i, j, value)
+    sheet.set_row(first, 32)
+    sheet.freeze_panes(first + 1, 1)
+    sheet.set_landscape()
+    sheet.set_paper(9)
+    sheet.fit_to_pages(1, 0)
+    sheet.repeat_rows(first)
+    sheet.set_footer("&LPlanning aid; not for operating limits&RPage &P of &N")
+
+
+def _write_chart(book: Any, sheet: Any, answer: Answer, chart: Chart, below: int) -> None:
+    """The curve over points on a sheet of their own, with a mark at today's value."""
+    points = _points(answer, chart)
+    data = book.add_worksheet("Chart points")
+    head = book.add_format({"bold": True, "bottom": 1})
+    data.set_column(0, 1, 24)
+    for j, text in enumerate((chart.x_unit, chart.y_unit)):
+        data.write_string(0, j, text, head)
+    top = max((y for _, y in points), default=1.0)
+    bottom = min(0.0 if chart.kind == "steps" else top, *(y for _, y in points))
+    for i, (x, y) in enumerate([*points, (chart.today, bottom), (chart.today, top)], 1):
+        data.write_number(i, 0, x)
+        data.write_number(i, 1, y)
+    last = len(points)
+    picture = book.add_chart({"type": "scatter", "subtype": "straight"})
+    picture.add_series(_series(chart.y_unit or "value", 1, last, {"color": INK, "width": 2.25}))
+    picture.add_series(_series("today", last + 1, last + 2, {"color": MARK, "dash_type": "dash"}))
+    picture.set_title({"name": chart.title, "name_font": {"size": 12}})
+    edges = [x for x, _ in points]
+    picture.set_x_axis({"name": chart.x_unit, "min": min(edges), "max": max(edges), "major_gridlines": {"visible": False}})
+    picture.set_y_axis({"name": chart.y_unit})
+    picture.set_legend({"position": "bottom"})
+    picture.set_size({"width": 700, "height": 360})
+    sheet.insert_chart(below, 0, picture)
+
+
+def _series(name: str, first: int, last: int, line: dict[str, Any]) -> dict[str, Any]:
+    return {
+        "name": name,
+        "categories": ["Chart points", first, 0, last, 0],
+        "values": ["Chart points", first, 1, last, 1],
+        "line": line,
+    }
+
+
+def _points(answer: Answer, chart: Chart) -> list[tuple[float, float]]:
+    """Corners of the steps (both ends of each), or the points of the line."""
+    rows = answer.table.rows
+    if chart.kind == "steps":
+        return [(float(row[x]), float(row[chart.y])) for row in rows for x in (chart.x, chart.x_end)]
+    return [(float(row[chart.x]), float(row[chart.y])) for row in rows]
