@@ -157,7 +157,7 @@ class Relaxer:
         """Of all sets with as many sides as this one, the least in relative size; None if time ran out."""
         end = time.monotonic() + self.seconds
         most = self._size(self.amounts_of(known) or {})
-        bound = min(most, 1.0)
+        bound = most
         while (left := end - time.monotonic()) > 0:
             outcome = _solve_whole(self._choice(len(known), bound), len(self.sides), left)
             if outcome.solution is not None:
