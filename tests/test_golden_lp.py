@@ -141,7 +141,11 @@ SMALLEST: dict[str, tuple[dict[str, Any], ...]] = {
         {"scenario": {"unit_factors": [{"month": "m", "unit": "splitter", "factor": 0.9, "reason": "hot"}]}},
     ),
     "ratio_limit": (
-        {"plant": {"ratio_limits": {"r": {"of": [{"cut": "rest"}], "to": [{"cut": "ethylene"}], "at_most": 1.2, "at_least": 0.3}}}},
+        {
+            "plant": {
+                "ratio_limits": {"r": {"of": [{"cut": "rest"}], "to": [{"cut": "ethylene"}], "at_most": 1.2, "at_least": 0.3}}
+            }
+        },
     ),
     "specification_limit": (
         {"plant": {"outlets": {"blend": merged(BLEND, {"specifications": {"purity": {"min": 0.5, "max": 0.8}}})}}},

@@ -69,7 +69,9 @@ def test_the_duals_recomputed_are_the_reduced_costs(every_plan: Plan) -> None:
     matrix = csr_matrix((lp.value, lp.index, lp.starts), shape=(len(lp.rows), len(lp.columns)))
     assert matrix @ solution.x == pytest.approx(lp.activity(solution.x), abs=1e-12)
     size = np.abs(lp.cost) + abs(matrix).T @ np.abs(solution.row_dual)
-    assert np.abs(lp.cost - matrix.T @ solution.row_dual - solution.reduced) == pytest.approx(np.zeros(len(size)), abs=1e-9 * size.max())
+    assert np.abs(lp.cost - matrix.T @ solution.row_dual - solution.reduced) == pytest.approx(
+        np.zeros(len(size)), abs=1e-9 * size.max()
+    )
 
 
 # ---------------------------------------------------------------------------------- the certificate tells right from wrong

@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from olefinlp.answers.quantities import Quantities
+from olefinlp.answers.quantities import NOISE, Quantities
 from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.inputs.case import PER_THOUSAND
 from olefinlp.inputs.measures import MASS
@@ -164,15 +164,13 @@ def balance_flows(again: Recomputed) -> list[Flow]:
     """Every line of every balance, all months."""
     flows: list[Flow] = []
     for month in again.q.case.months:
-        flows += [flow for flow in _mass(again, month) if flow.amount]
-        flows += [flow for flow in _feeds(again, month) if flow.amount]
-        flows += [flow for flow in _cuts(again, month) if flow.amount]
+        flows += [*_mass(again, month), *_feeds(again, month), *_cuts(again, month)]
         for utility in again.plant.file.utilities:
-            flows += [flow for flow in _utility(again, utility, month) if flow.amount]
+            flows += _utility(again, utility, month)
         for element in ("hydrogen", "carbon"):
             if element_reason(again.plant, again, element) == "":
-                flows += [flow for flow in _element(again, element, month) if flow.amount]
-    return flows
+                flows += _element(again, element, month)
+    return [flow for flow in flows if abs(flow.amount) > NOISE * again.q.size]
 
 
 def _mass(again: Recomputed, month: str) -> Iterator[Flow]:
@@ -293,7 +291,7 @@ def _element(again: Recomputed, element: str, month: str) -> Iterator[Flow]:
     for feed in again.q.case.parcels:
         carried = again.charged(feed, month) * feed_element(again.plant, feed, element)
         yield Flow(month, f"{element} in cracking", f"{feed} charged", 1, carried, "kt")
-        yield Flow(month, f"{element} in cracking", "loss", -1, carried * again.loss, "kt")
+        yield Flow(month, f"{element} in cracking", f"loss of {feed}", -1, carried * again.loss, "kt")
     for name, made in again.components(month).items():
         brought = sum(
             again.q.bought(source, month) * share(again.plant.file.side_streams[data.feed].composition[name])

@@ -36,6 +36,7 @@ MULTIPLIED_OUT = ("ratio", "specification")
 FIGURES = 4
 
 NOTE = (
+    "Each way changes as little as makes a plan possible; to relax further may earn more. "
     "Sizes are relative to the limit as written; a limit of zero, a ratio and a specification are measured by the "
     "amount missed against the largest limit of the same unit. To relax a capacity or a specification here is a change of "
     "the plan's figures, no permission: engineering limits and contracts of the plant always win."
@@ -55,6 +56,8 @@ FAMILIES = {
     "stock": "all tank limits",
     "end_stock": "all stocks at the end",
 }
+CLASHES_SHOWN = 2
+NAMES_SHOWN = 3
 NUMBERS = ("no", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine", "ten")
 
 
@@ -62,7 +65,7 @@ NUMBERS = ("no", "one", "two", "three", "four", "five", "six", "seven", "eight",
 class Change:
     """One side of a limit to relax, in the unit in which people read it; `to` is None when it is dropped.
 
-    `least` is the smallest change that does, `written` less or plus it rounded to the loose side is `to`.
+    `least` is the smallest change that does (None for a ratio to nothing); `to` is it rounded to the loose side.
     """
 
     limit: Limit
@@ -71,7 +74,7 @@ class Change:
     which: str
     written: float
     to: float | None
-    least: float
+    least: float | None
     unit: str
 
     @property
@@ -118,11 +121,13 @@ def explain_impossible(
         return (otherwise(scenario) if otherwise else None) or _possible(case)
     clash = find_clash(case, lp) or Clash(())
     if relaxer.impossible(relaxer.sides):
-        return Answer("impossible", _title(case), _tables(case, Search((), None, False), clash, []), tuple(str(clash).splitlines()))
+        return Answer(
+            "impossible", _title(case), _tables(case, Search((), None, False), clash, []), tuple(str(clash).splitlines())
+        )
     search = _search(case, lp, relaxer)
     innocent = _not_the_cause(relaxer)
-    sentences = [_clash_sentence(clash), *_way_sentences(case, search, seconds), *_innocent_sentence(case, lp, innocent)]
-    records = [_innocent_record(case, _limit_of(case, lp, side), side) for side in innocent]
+    sentences = [*_clash_sentences(clash), *_way_sentences(case, search, seconds), *_innocent_sentence(case, lp, innocent)]
+    records = [_innocent_record(_limit_of(case, lp, side), side) for side in innocent]
     return Answer("impossible", _title(case), _tables(case, search, clash, records), tuple(sentences), NOTE)
 
 
@@ -218,7 +223,7 @@ def _written(case: Case, lp: LabelledLp, relaxation: Relaxation, notch: int) -> 
     for side, limit in ratios.items():
         del left[side]
         others = relaxed(program, {other: amounts[other] * (1 + 1e-6) for other in left})
-        changes[side], program = _ratio_change(case, others, program, limit, side, amounts[side], notch)
+        changes[side], program = _ratio_change(case, others, program, limit, side, notch)
     return [changes[side] for side in amounts], program
 
 
@@ -227,9 +232,7 @@ def _plain_change(limit: Limit, side: Side, need: float, notch: int) -> Change:
     to = _outward((written + (-need if side.low else need)) * limit.scale, need * limit.scale, side.low, notch)
     dropped = side.low and to <= 0
     which = "minimum" if side.low else "maximum"
-    return Change(
-        limit, side, limit.label, which, written * limit.scale, None if dropped else to, need * limit.scale, limit.unit
-    )
+    return Change(limit, side, limit.label, which, written * limit.scale, None if dropped else to, need * limit.scale, limit.unit)
 
 
 def _amount_of(change: Change) -> float:
@@ -270,21 +273,20 @@ class Written:
 
 
 def _ratio_change(
-    case: Case, others: LabelledLp, program: LabelledLp, limit: Limit, side: Side, need: float, notch: int
+    case: Case, others: LabelledLp, program: LabelledLp, limit: Limit, side: Side, notch: int
 ) -> tuple[Change, LabelledLp]:
-    """The least change of the written ratio; where nothing is below the line, of the multiplied-out sum."""
+    """The least change of the written ratio; where nothing is below the line, it must be dropped."""
     written = _as_written(case, limit)
     below = _coefficients(program, written.below, limit.month)
-    least = least_ratio(others, side, below)
-    if least is None:
-        change = _plain_change(limit, side, need, notch)
-        change = replace(change, to=_outward(-need if side.low else need, need, side.low, notch), name=limit.label)
-        return change, relaxed(program, {side: abs(change.to or 0.0)})
-    need = least / written.one
     down = written.which == "minimum"
-    to = _outward(written.number + (-need if down else need), need, down, notch)
-    change = Change(limit, side, written.name, written.which, written.number, to, need, written.unit)
-    return change, with_ratio(program, side, below, abs(to - written.number) * written.one)
+    change = least_ratio(others, side, below)
+    least = None if change is None else change / written.one
+    to = None if least is None else _outward(written.number + (-least if down else least), least, down, notch)
+    if to is None or (down and to <= 0):
+        dropped = Change(limit, side, written.name, written.which, written.number, None, least, written.unit)
+        return dropped, relaxed(program, {side: math.inf})
+    found = Change(limit, side, written.name, written.which, written.number, to, least, written.unit)
+    return found, with_ratio(program, side, below, abs(to - written.number) * written.one)
 
 
 def _as_written(case: Case, limit: Limit) -> Written:
@@ -350,10 +352,14 @@ def _innocent_sentence(case: Case, lp: LabelledLp, innocent: list[Side]) -> list
 
 
 def _family_words(family: str, labels: dict[str, list[bool]]) -> list[str]:
+    """A family's limits that are not the cause: all, all but a few, or a few by name."""
     free = [label for label, sides in labels.items() if all(sides)]
-    if len(free) == len(labels):
-        return free if len(free) < 3 else [FAMILIES[family]]
-    return free
+    others = [label for label in labels if label not in free]
+    if len(free) <= NAMES_SHOWN or not (others or len(free) == len(labels)):
+        return free
+    if len(others) <= NAMES_SHOWN:
+        return [f"{FAMILIES[family]}{f' but {_listed(others)}' if others else ''}"]
+    return [*free[:NAMES_SHOWN], f"{len(free) - NAMES_SHOWN} more of {FAMILIES[family].removeprefix('all ')}"]
 
 
 # ---------------------------------------------------------------------------------- words
@@ -363,15 +369,17 @@ def _listed(words: list[str]) -> str:
     return " and ".join([", ".join(words[:-1]), words[-1]] if len(words) > 1 else words)
 
 
-def _clash_sentence(clash: Clash) -> str:
-    if not clash.sets:
-        return "The limits cannot all be met."
-    first = clash.sets[0]
-    texts = [f"{limit.text}{f' ({limit.reason})' if limit.reason else ''}" for limit in first]
-    start = "This limit cannot be met: " if len(first) == 1 else "These limits cannot be met together: "
-    others = len(clash.sets) - 1
-    more = f"; {others} more such clash{'es' if others > 1 else ''} beside it" if others else ""
-    return f"{start}{'; '.join(texts)}{more}."
+def _clash_sentences(clash: Clash) -> list[str]:
+    """The first clashes in full, the number of the others."""
+    sentences = [_clash_sentence(limits, bool(position)) for position, limits in enumerate(clash.sets[:CLASHES_SHOWN])]
+    others = len(clash.sets) - CLASHES_SHOWN
+    return [*sentences, f"And {_counted(others, 'more clash', 'more clashes')}."] if others > 0 else sentences
+
+
+def _clash_sentence(limits: tuple[ClashingLimit, ...], further: bool) -> str:
+    texts = [f"{limit.text}{f' ({limit.reason})' if limit.reason else ''}" for limit in limits]
+    start = "This limit cannot be met" if len(limits) == 1 else "These limits cannot be met together"
+    return f"{'Apart from that: ' if further else ''}{start}: {'; '.join(texts)}."
 
 
 def _way_sentences(case: Case, search: Search, seconds: float) -> list[str]:
@@ -399,17 +407,20 @@ def _closing(search: Search) -> list[str]:
         return ["There is no other way out."]
     if search.more is None:
         return ["Other ways may exist: the search was stopped."] if last.relaxation.fewest else []
-    if search.more:
-        least = " change the least" if last.relaxation.least else " were found first"
-        same = sum(len(way.changes) == count for way in search.ways)
-        return [f"There are more sets of {_count(count)}; {'this one' if same == 1 else f'these {NUMBERS[same]}'}"
-                f"{least if same > 1 else least.replace('change', 'changes').replace('were', 'was')}."]
-    return [f"{_set_of(count, 'No other')} would do."]
+    if not search.more:
+        return [f"{_set_of(count, 'No other')} would do."]
+    same = sum(len(way.changes) == count for way in search.ways)
+    these = "this one changes" if same == 1 else f"these {NUMBERS[same]} change"
+    return [f"There are more sets of {_count(count)}{f'; {these} the least' if last.relaxation.least else ''}."]
 
 
 def _count(count: int) -> str:
+    return _counted(count, "limit", "limits")
+
+
+def _counted(count: int, one: str, many: str) -> str:
     number = NUMBERS[count] if count < len(NUMBERS) else str(count)
-    return f"{number} limit{'' if count == 1 else 's'}"
+    return f"{number} {one if count == 1 else many}"
 
 
 def _set_of(count: int, which: str) -> str:
@@ -418,11 +429,19 @@ def _set_of(count: int, which: str) -> str:
 
 def _way_sentence(case: Case, position: int, ways: tuple[WayOut, ...]) -> str:
     way = ways[position]
-    many = len(case.months) > 1
-    texts = [_change_words(change, many) for change in way.changes]
-    count = len(texts)
+    count = len(way.changes)
     verb = "Relax" if position == 0 else "Or relax"
-    return f"{verb} {count} limit{'' if count == 1 else 's'}: {_listed(texts)}; {_earns(case, way, ways[0])}."
+    return f"{verb} {count} limit{'' if count == 1 else 's'}: {_changes_words(case, way.changes)}; {_earns(case, way, ways[0])}."
+
+
+def _changes_words(case: Case, changes: tuple[Change, ...]) -> str:
+    """The changes of one month in a row; of several months by limit."""
+    if len(case.months) == 1:
+        return _listed([f"{_what(change)} {_from_to(change)}" for change in changes])
+    by_limit: dict[str, list[str]] = {}
+    for change in changes:
+        by_limit.setdefault(_what(change), []).append(f"in {change.limit.month} {_from_to(change)}")
+    return "; ".join(f"{what} {', '.join(texts)}" for what, texts in by_limit.items())
 
 
 def _earns(case: Case, way: WayOut, first: WayOut) -> str:
@@ -440,16 +459,18 @@ def _difference(difference: float, currency: str) -> str:
     return f"{amount(abs(difference))} k{currency} {'more' if difference > 0 else 'less'} than the first"
 
 
-def _change_words(change: Change, many: bool) -> str:
-    """For example: ethylene_contract minimum from 80 kt to 73.1 kt (−8.6 %)."""
-    month = f"{change.limit.month} " if many else ""
+def _what(change: Change) -> str:
+    return f"{change.name} {change.which}"
+
+
+def _from_to(change: Change) -> str:
+    """For example: from 80 kt to 73.1 kt (−8.6 %)."""
     unit = f" {change.unit}" if change.unit else ""
-    what = f"{month}{change.name} {change.which}"
     if change.to is None:
-        return f"{what} of {_figure(change.written)}{unit} dropped"
+        return f"from {_figure(change.written)}{unit} to none"
     start = f"{_figure(change.written)}{unit if change.written else ''}"
     percent = "" if change.share is None else f" ({_percent(change.share)})"
-    return f"{what} from {start} to {_figure(change.to)}{unit}{percent}"
+    return f"from {start} to {_figure(change.to)}{unit}{percent}"
 
 
 def _figure(value: float) -> str:
@@ -532,8 +553,8 @@ def _change_record(number: int, change: Change) -> Record:
         "limit": change.name,
         "side": change.which,
         "written": change.written,
-        "to": change.to,
-        "change": (change.to or 0.0) - change.written,
+        "to": change.to,  # None: dropped
+        "change": None if change.to is None else change.to - change.written,
         "least_change": change.least,
         "unit": change.unit,
         "share": change.share,
@@ -566,7 +587,7 @@ def _clash_record(number: int, limit: ClashingLimit) -> Record:
     }
 
 
-def _innocent_record(case: Case, limit: Limit, side: Side) -> Record:
+def _innocent_record(limit: Limit, side: Side) -> Record:
     place = limit.place_low if side.low else limit.place_high
     return {
         "month": limit.month,

@@ -10,6 +10,7 @@ from olefinlp.answers.quantities import Quantities
 from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.inputs.case import Limit
 
+NOTHING = "nothing of it"
 AT = 1e-7
 """Relative distance at which a limit counts as reached."""
 
@@ -42,8 +43,8 @@ def limit_record(q: Quantities, limit: Limit) -> Record:
     label = (f"{limit.family}_limit", *limit.key)
     value, dual = q.activity(label), q.dual(*label)
     state, side = _state(q, limit, value, dual)
-    if abs(dual * limit.worth_scale) < 1e-9:
-        dual = 0.0
+    if abs(dual * limit.worth_scale) < 1e-9 or state == NOTHING:
+        dual = 0.0  # what is not made has no limit that is worth anything
     place = limit.place_low if side == "low" else limit.place_high or limit.place_low
     return {
         "month": limit.month,
@@ -66,12 +67,12 @@ def limit_record(q: Quantities, limit: Limit) -> Record:
 def _state(q: Quantities, limit: Limit, value: float | None, dual: float) -> tuple[str, str]:
     """In words where the plan stands, and which side was written there."""
     if value is None:
-        return "nothing of it", ""
+        return NOTHING, ""
     room = AT * max(abs(limit.low or 0.0), abs(limit.high or 0.0), 1e-6 * q.size)
     at_low = limit.low is not None and value <= limit.low + room
     at_high = limit.high is not None and value >= limit.high - room
     if limit.family in ("specification", "ratio") and not _anything(q, limit):
-        return "nothing of it", ""
+        return NOTHING, ""
     if at_low and at_high:
         return "fixed", "high" if dual > 0 else "low"
     if at_high:
@@ -88,5 +89,5 @@ def _anything(q: Quantities, limit: Limit) -> bool:
 
 
 def binding(table: Table) -> list[Record]:
-    """Limits that bind and are worth something, dearest effect first within a month."""
+    """Limits that bind and are worth something, in the order of the table."""
     return [row for row in table.rows if row["state"] in ("at maximum", "at minimum", "fixed") and row["worth"] > 0]

@@ -14,17 +14,14 @@ from olefinlp.answers.limits import limits_table
 from olefinlp.answers.money import MoneyLine, margin, money_lines, money_table
 from olefinlp.answers.plan_tables import (
     feeds_table,
-    flat_table,
     furnaces_table,
     groups_table,
-    inputs_table,
-    prices_table,
     recovery_table,
-    reduced_costs_table,
     slate_table,
     stocks_table,
 )
 from olefinlp.answers.quantities import Quantities
+from olefinlp.answers.record_tables import flat_table, inputs_table, prices_table, reduced_costs_table
 from olefinlp.answers.tables import Table
 from olefinlp.inputs.case import Case
 from olefinlp.inputs.findings import Finding, Place, shown

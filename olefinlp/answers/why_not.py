@@ -40,6 +40,7 @@ FURNACES, CREWS, UNITS, LIMITS, VARIABLE = "furnace hours", "decoke crew", "reco
 BUYING, GATE = "limits on buying", "worth at the gate"
 GROUPS = (PRODUCTS, FEED, BUYING, FIRING, UTILITIES, EMISSIONS, FURNACES, CREWS, UNITS, LIMITS, VARIABLE)
 DEFINITIONS = {"component_balance": "component_made", "cut_balance": "cut_made", "unit_load_balance": "unit_load"}
+_NAMED = (LIMITS, UTILITIES, BUYING)
 EXACT = 1e-9
 PER = {"mass": "t", "heat": "GJ LHV", "power": "MWh"}
 _CAUSES = {"component_made": " of products", "cut_made": " of products", "unit_load": " of recovery units"}
@@ -83,8 +84,8 @@ def part_of(plan: Plan, x: Floats) -> Share:
 def follow(plan: Plan, given: Mapping[Label, float], month: str) -> Floats:
     """Variables with these values and the components, cuts and unit loads that follow from them."""
     lp, x = plan.lp, np.zeros(len(plan.lp.columns))
-    for label, value in given.items():
-        x[lp.column_at[label]] += value
+    for label, moved in given.items():
+        x[lp.column_at[label]] += moved
     case = plan.quantities.case
     for family, names in (("component_balance", case.components), ("cut_balance", case.cuts), ("unit_load_balance", case.units)):
         for name in names:
@@ -236,6 +237,7 @@ class Account:
     used: float
     lines: tuple[Term, ...]
     components: dict[str, float]
+    worths: Mapping[str, Worth]
     total: float
     worth: float
 
@@ -262,7 +264,7 @@ def _account(plan: Plan, given: Mapping[Label, float], month: str, worths: Mappi
     used = q.value(*of["charge" if mode else "bought"])
     at_gate = math.fsum(line.value for line in lines if line.group not in (FEED, BUYING))
     group, severity = q.case.mode_group.get(mode, ""), q.case.mode_severity.get(mode, "")
-    return Account(month, source, group, severity, used, lines, made, total, at_gate)
+    return Account(month, source, group, severity, used, lines, made, worths, total, at_gate)
 
 
 def _best(accounts: Iterable[Account]) -> Account | None:
@@ -276,7 +278,7 @@ def _ways(plan: Plan, mode: str, month: str, worths: Mapping[str, Worth], source
     """
     case, found = plan.quantities.case, []
     for parcel in case.charged_parcels.get((mode, month), ()):
-        charged = {("charge", mode, parcel, month): 1.0}
+        charged: dict[Label, float] = {("charge", mode, parcel, month): 1.0}
         sellers = [s for s in case.sources if case.parcel_of.get((s, month)) == parcel and source in (None, s)]
         if source is None and _is_there(plan, parcel, month):
             sellers = []
@@ -326,14 +328,12 @@ def why_not_mode(plan: Plan, mode: str, month: str | None = None) -> Answer:
     known = [known.name for known in plan.scenario.plant.modes]
     if mode not in known:
         raise ValueError(f"`{mode}` is no mode of this plant; {near_name(mode, known)}")
-    accounts, sentences = [], []
+    accounts: list[Account] = []
+    sentences: list[str] = []
     for t in _months(plan, month):
         best = _best(_ways(plan, mode, t, component_worths(plan, t), None))
-        if best is None:
-            sentences.append(f"{t}: {_mode_words(mode)} cannot be used: its feed is not on offer.")
-            continue
-        accounts.append(best)
-        sentences.append(_mode_sentence(plan, best, mode))
+        accounts += [best] if best else []
+        sentences.append(_mode_sentence(plan, best, mode, t))
     tables = (_lines_table(plan, accounts), _components_table(plan, accounts))
     return Answer("why_not_mode", f"Why not {_mode_words(mode)}", tables, tuple(sentences), NOTE)
 
@@ -446,12 +446,11 @@ def _components_table(plan: Plan, accounts: list[Account]) -> Table:
         Column("net", "Worth", per_tonne, "price"),
         Column("value", "Value per t charged", per_tonne, "price"),
     )
-    worths = {t: component_worths(plan, t) for t in {a.month for a in accounts}}
     rows: list[Record] = []
     for a in accounts:
         head = {"month": a.month, "source": a.source, "furnaces": a.group, "severity": a.severity}
         for component, amount in a.components.items():
-            worth = worths[a.month][component]
+            worth = a.worths[component]
             if amount:
                 worth_record = {"made": worth.made, "taken": worth.net - worth.made, "net": worth.net}
                 rows.append(head | {"component": component, "amount": amount, "value": amount * worth.net} | worth_record)
@@ -466,29 +465,37 @@ def _mode_words(mode: str) -> str:
     return f"{feed} in {group} at {severity} severity"
 
 
-def _mode_sentence(plan: Plan, a: Account, mode: str) -> str:
-    name, per_tonne = f"{a.month}: {_mode_words(mode)}", f"{plan.currency}/t"
-    charged = plan.quantities.charged(mode, a.month)
+def _mode_sentence(plan: Plan, best: Account | None, mode: str, month: str) -> str:
+    head, charged = f"{month}: {_mode_words(mode)}", plan.quantities.charged(mode, month)
+    nothing = _nothing_of(plan, mode.split(".")[1], month)
     if charged:
-        return f"{name} is used: {amount_words(charged)} kt are charged."
-    if _nothing(a):
-        return f"{name} is not used, but could be at the same margin."
-    return f"{name} would lose {-a.total:,.1f} {per_tonne}: {_items(a)}." if a.total < -0.05 else _small(a, name, per_tonne)
+        return f"{head} is used: {amount_words(charged)} kt are charged."
+    if best is None or nothing:
+        return f"{head} cannot be used: {nothing or 'its feed is not on offer'}."
+    if _even(best):
+        return f"{head} is not used, but could be at the same margin."
+    loss = f"{-best.total:,.1f}" if best.total <= -0.1 else f"{-best.total:.2g}"
+    return f"{head} would lose {loss} {plan.currency}/t: {_items(best)}."
 
 
-def _small(a: Account, name: str, per_tonne: str) -> str:
-    return f"{name} would lose {-a.total:.2g} {per_tonne}: {_items(a)}."
+def _nothing_of(plan: Plan, feed: str, month: str) -> str:
+    """Why a recycle cannot be charged at all; empty for other feeds."""
+    cut = plan.scenario.plant.recycle_feeds().get(feed)
+    if cut is None or plan.quantities.value("cut_made", cut, month):
+        return ""
+    return f"no {cut} is made"
 
 
-def _nothing(a: Account) -> bool:
-    return abs(a.total) <= 1e-7 * math.fsum(abs(line.value) for line in a.lines)
+def _even(account: Account) -> bool:
+    """Whether a tonne more or less leaves the margin as it is."""
+    return abs(account.total) <= 1e-7 * math.fsum(abs(line.value) for line in account.lines)
 
 
 def _items(a: Account) -> str:
     """The products, the feed and the three largest things taken."""
     sums: dict[str, float] = {}
     for line in a.lines:
-        words = line.item if line.group in (UNITS, LIMITS, UTILITIES, BUYING) else line.group
+        words = f"{line.item} load" if line.group == UNITS else line.item if line.group in _NAMED else line.group
         if line.group not in (PRODUCTS, FEED):
             sums[words] = sums.get(words, 0.0) + line.value
     largest = sorted((pair for pair in sums.items() if pair[1] < 0), key=lambda pair: pair[1])[:3]
@@ -499,19 +506,25 @@ def _items(a: Account) -> str:
 
 
 def _feed_sentence(plan: Plan, ways: list[Account], name: str, month: str) -> str:
-    q, per_tonne, head = plan.quantities, f"{plan.currency}/t", f"{month}: {name.replace('.', ' ')}"
-    best = _best(ways)
+    head, best = f"{month}: {name.replace('.', ' ')}", _best(ways)
     if best is None:
         return f"{head} cannot be used: no furnace can crack it."
-    where = f"in {best.group} at {best.severity} severity" if best.group else "in the recovery train"
+    where = f"best in {best.group} at {best.severity} severity" if best.group else "in the recovery train"
     if not best.source:
-        used = sum(way.used for way in ways)
-        state = f"is used: {amount_words(used)} kt in these modes" if used else f"is not used; best is {where}: {_items(best)}"
-        return f"{head} {state}."
-    price = -best.sum_of(FEED)
-    worth = worth_at_gate(q, best.source, next_step(plan, best.source, month), month)
-    against = f"{worth:,.1f} {per_tonne} against a price of {price:,.1f}"
-    bought = q.bought(best.source, month)
+        nothing = _nothing_of(plan, name, month)
+        used = sum(plan.quantities.charged(mode, month) for mode, feed in plan.quantities.case.mode_feed.items() if feed == name)
+        if used or nothing:
+            return f"{head} is used: {amount_words(used)} kt are charged." if used else f"{head} cannot be used: {nothing}."
+        return f"{head} is not used; {where}, where {_items(best)}."
+    return _source_sentence(plan, best, head, where)
+
+
+def _source_sentence(plan: Plan, best: Account, head: str, where: str) -> str:
+    q, source, month = plan.quantities, best.source, best.month
+    worth = worth_at_gate(q, source, next_step(plan, source, month), month)
+    against = f"worth {worth:,.1f} {plan.currency}/t against a price of {-best.sum_of(FEED):,.1f}"
+    bought = q.bought(source, month)
     if bought:
-        return f"{head} is used: {amount_words(bought)} kt are bought; one more tonne is worth {against}."
-    return f"{head} is not bought: its first tonne is worth {against}; best {where}, where {_items(best)}."
+        return f"{head} is used: {amount_words(bought)} kt are bought; one more tonne is {against}."
+    even = ", so it could be bought at the same margin" if _even(best) else ""
+    return f"{head} is not bought: its first tonne is {against}{even}; {where}, where {_items(best)}."

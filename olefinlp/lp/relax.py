@@ -29,8 +29,10 @@ from olefinlp.lp.solver import Outcome, Solver, Status, solve
 
 SECONDS = 10.0
 """For each question put to whole numbers."""
-SECONDS_IN_ALL = 20.0
+SECONDS_IN_ALL = 15.0
 """After these, no further set is looked for."""
+FIRST_BOUND = 100.0
+"""Relative amounts are first held below this, to keep the whole-number program well scaled."""
 SMALL = 1e-7
 """A relaxation below this share of the limit's size is rounding of the solver."""
 CLASHES_AT_ONCE = 12
@@ -157,7 +159,7 @@ class Relaxer:
         """Of all sets with as many sides as this one, the least in relative size; None if time ran out."""
         end = time.monotonic() + self.seconds
         most = self._size(self.amounts_of(known) or {})
-        bound = most
+        bound = min(most, FIRST_BOUND)
         while (left := end - time.monotonic()) > 0:
             outcome = _solve_whole(self._choice(len(known), bound), len(self.sides), left)
             if outcome.solution is not None:
@@ -166,6 +168,7 @@ class Relaxer:
                     continue
                 if -outcome.solution.objective <= bound * (1 + 1e-9) or bound >= most:
                     return sides
+                most = min(most, -outcome.solution.objective)
             elif outcome.status is not Status.INFEASIBLE or bound >= most:
                 return None
             bound = min(most, 10 * bound)

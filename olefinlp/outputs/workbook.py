@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from olefinlp.answers.tables import Record, Table
+from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.outputs.files import write_whole
 from olefinlp.outputs.workbook_book import Book
 from olefinlp.outputs.workbook_money import write_feeds, write_money, write_prices, write_slate
@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     from olefinlp.answers.answer import Answer
     from olefinlp.answers.plan import Plan
 
+IN_WORDS = "in_words"
 BINDING = ("at maximum", "at minimum", "fixed")
 
 
@@ -38,7 +39,7 @@ def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answ
 def workbook_bytes(plan: Plan, answers: tuple[Answer, ...] = ()) -> bytes:
     """The whole file in memory."""
     book = Book(plan)
-    sheets = {name: book.sheet(name) for name in sheet_names(plan)}
+    sheets = {name: book.sheet(name) for name in sheet_names(plan, answers)}
     prices, price_rows = write_prices(book, sheets["Prices"], plan)
     money = write_money(book, sheets["Money"], plan, prices, price_rows)
     write_overview(book, sheets[OVERVIEW], plan, money)
@@ -47,17 +48,40 @@ def workbook_bytes(plan: Plan, answers: tuple[Answer, ...] = ()) -> bytes:
     _write_balances(book, sheets["Balances"], plan.closures)
     for name, table, frozen in _plain_tables(plan):
         write_table(book, sheets[name], table, frozen=frozen, header=0 if name == "Flat list" else 1)
+    for table in _answer_tables(answers):
+        write_table(book, sheets[table.title], table, frozen=1 if table.name == IN_WORDS else 3)
     _mark(book, sheets["Limits"], plan.limits, "state", BINDING)
     _mark_full(book, sheets["Recovery load"], plan.recovery)
     _mark_full(book, sheets["Furnace hours"], plan.furnace_groups)
     return book.to_bytes()
 
 
-def sheet_names(plan: Plan) -> list[str]:
+def sheet_names(plan: Plan, answers: tuple[Answer, ...] = ()) -> list[str]:
     """The sheets in the order in which people see them."""
     stocks = ["Stocks"] if plan.stocks.rows else []
-    supply = [OVERVIEW, "Feeds", "Furnaces", "Furnace hours", "Slate", "Recovery load", *stocks, "Balances", "Balance lines"]
-    return [*supply, "Money", "Prices", "Limits", "Reduced costs", "Inputs as used", "Audit", "Flat list"]
+    words, *around = [table.title for table in _answer_tables(answers)] or [""]
+    supply = [
+        OVERVIEW,
+        *([words] if words else []),
+        "Feeds",
+        "Furnaces",
+        "Furnace hours",
+        "Slate",
+        "Recovery load",
+        *stocks,
+        "Balances",
+        "Balance lines",
+    ]
+    return [*supply, "Money", "Prices", "Limits", *around, "Reduced costs", "Inputs as used", "Audit", "Flat list"]
+
+
+def _answer_tables(answers: tuple[Answer, ...]) -> list[Table]:
+    """The answers in words, then their tables, each of which gets a sheet under its title."""
+    if not answers:
+        return []
+    rows: list[Record] = [{"answer": a.title, "sentence": sentence} for a in answers for sentence in a.sentences]
+    words = Table(IN_WORDS, "In words", (Column("answer", "Answer"), Column("sentence", "In words")), rows)
+    return [words, *(table for answer in answers for table in answer.tables if table.rows)]
 
 
 def _plain_tables(plan: Plan) -> Iterator[tuple[str, Table, int]]:
