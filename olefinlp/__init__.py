@@ -16,11 +16,23 @@ import importlib
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from olefinlp.answers.answer import Answer as Answer
     from olefinlp.answers.balances import BalanceError as BalanceError
+    from olefinlp.answers.break_even import break_even_prices as break_even_prices
+    from olefinlp.answers.cash_cost import cash_cost as cash_cost
+    from olefinlp.answers.curves import step_curve as step_curve
+    from olefinlp.answers.default import default_answers as default_answers
+    from olefinlp.answers.impossible import explain_impossible as explain_impossible
+    from olefinlp.answers.margin_owners import who_earns_the_margin as who_earns_the_margin
     from olefinlp.answers.plan import NoPlan as NoPlan
     from olefinlp.answers.plan import Plan as Plan
     from olefinlp.answers.plan import make_plan as make_plan
+    from olefinlp.answers.ratio_curve import ratio_curve as ratio_curve
+    from olefinlp.answers.room import room_to_move as room_to_move
     from olefinlp.answers.tables import Table as Table
+    from olefinlp.answers.why_not import why_not_feed as why_not_feed
+    from olefinlp.answers.why_not import why_not_mode as why_not_mode
+    from olefinlp.answers.worth import worth_of_limits as worth_of_limits
     from olefinlp.inputs.findings import Finding as Finding
     from olefinlp.inputs.findings import InputError as InputError
     from olefinlp.inputs.plant import Plant as Plant
@@ -28,26 +40,42 @@ if TYPE_CHECKING:
     from olefinlp.inputs.scenario import Scenario as Scenario
     from olefinlp.inputs.scenario import read_scenario as read_scenario
     from olefinlp.lp.certificate import CertificateError as CertificateError
+    from olefinlp.outputs import write_answer as write_answer
     from olefinlp.outputs import write_csv as write_csv
     from olefinlp.outputs import write_json as write_json
     from olefinlp.outputs import write_lp as write_lp
     from olefinlp.outputs import write_workbook as write_workbook
+    from olefinlp.outputs.files import OutputError as OutputError
 
 __version__ = "0.1.0"
 
 _HOMES = {
+    "Answer": "olefinlp.answers.answer",
     "BalanceError": "olefinlp.answers.balances",
     "CertificateError": "olefinlp.lp.certificate",
     "Finding": "olefinlp.inputs.findings",
     "InputError": "olefinlp.inputs.findings",
     "NoPlan": "olefinlp.answers.plan",
+    "OutputError": "olefinlp.outputs.files",
     "Plan": "olefinlp.answers.plan",
     "Plant": "olefinlp.inputs.plant",
     "Scenario": "olefinlp.inputs.scenario",
     "Table": "olefinlp.answers.tables",
+    "break_even_prices": "olefinlp.answers.break_even",
+    "cash_cost": "olefinlp.answers.cash_cost",
+    "default_answers": "olefinlp.answers.default",
+    "explain_impossible": "olefinlp.answers.impossible",
     "make_plan": "olefinlp.answers.plan",
+    "ratio_curve": "olefinlp.answers.ratio_curve",
     "read_plant": "olefinlp.inputs.plant",
     "read_scenario": "olefinlp.inputs.scenario",
+    "room_to_move": "olefinlp.answers.room",
+    "step_curve": "olefinlp.answers.curves",
+    "who_earns_the_margin": "olefinlp.answers.margin_owners",
+    "why_not_feed": "olefinlp.answers.why_not",
+    "why_not_mode": "olefinlp.answers.why_not",
+    "worth_of_limits": "olefinlp.answers.worth",
+    "write_answer": "olefinlp.outputs",
     "write_csv": "olefinlp.outputs",
     "write_json": "olefinlp.outputs",
     "write_lp": "olefinlp.outputs",
@@ -55,19 +83,33 @@ _HOMES = {
 }
 
 __all__ = [
+    "Answer",
     "BalanceError",
     "CertificateError",
     "Finding",
     "InputError",
     "NoPlan",
+    "OutputError",
     "Plan",
     "Plant",
     "Scenario",
     "Table",
     "__version__",
+    "break_even_prices",
+    "cash_cost",
+    "default_answers",
+    "explain_impossible",
     "make_plan",
+    "ratio_curve",
     "read_plant",
     "read_scenario",
+    "room_to_move",
+    "step_curve",
+    "who_earns_the_margin",
+    "why_not_feed",
+    "why_not_mode",
+    "worth_of_limits",
+    "write_answer",
     "write_csv",
     "write_json",
     "write_lp",

@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     Writer = Callable[[Plan, Path, tuple[Answer, ...]], object]
 
 EXIT_OUTPUT, EXIT_INPUT, EXIT_FAILED = 1, 2, 6
+NOT_PROVEN = "hint: this is a fault of the tool or of extreme numbers, not a plan; please report it"
 
 app = typer.Typer(
     help="Plan a month of a light-olefins plant: which feeds to buy, how to crack them, what to sell, for the best margin.",
@@ -178,6 +179,32 @@ def curve(
 
 
 @app.command()
+def explain(
+    scenario: ScenarioFile = None,
+    feed: Annotated[str | None, typer.Option(help="Why this feed, or feed.source, is not bought.")] = None,
+    mode: Annotated[str | None, typer.Option(metavar="GROUP.FEED.SEVERITY", help="Why this mode is not used.")] = None,
+    price_case: PriceCase = None,
+    output: Annotated[Path | None, typer.Option("--output", "-o", help="Workbook with all tables of the answer.")] = None,
+) -> None:
+    """Say which limits make a month impossible and what to relax; of a possible month, why a feed is not bought."""
+    import pyomo.environ  # noqa: F401
+
+    from olefinlp.outputs.answer_files import answer_text, write_answer
+    from olefinlp.outputs.files import OutputError
+
+    found = _explanations(_read(_scenario_path(scenario), price_case), feed, mode)
+    if output and len(found) != 1:
+        _stop(f"{len(found)} answers do not fit one workbook\nhint: name one --feed or one --mode", EXIT_INPUT)
+    typer.echo("\n\n".join(answer_text(answer) for answer in found) or "Every feed on offer is bought.")
+    try:
+        if output:
+            write_answer(found[0], output)
+            _note(f"\nwritten: {_shown(output)}")
+    except OutputError as error:
+        _stop(str(error), EXIT_OUTPUT)
+
+
+@app.command()
 def new(folder: Annotated[Path, typer.Argument(help="Folder to put the starter plants and scenarios in.")]) -> None:
     """Put the invented starter plants and scenarios into a folder, to change into your own."""
     from olefinlp.starter_files import DEFAULT, copy_starter
@@ -238,6 +265,42 @@ def _answers(made: Plan) -> tuple[Answer, ...]:
     return default_answers(made)
 
 
+def _explanations(scenario: Scenario, feed: str | None, mode: str | None) -> list[Answer]:
+    """Why there is no plan; if there is one, why it leaves out a feed or mode, or every feed that it does not buy."""
+    from olefinlp.answers.impossible import explain_impossible
+    from olefinlp.answers.why_not import why_not_feed, why_not_mode
+
+    made = _plan_if_possible(scenario)
+    if made is None:
+        return [explain_impossible(scenario)]
+    offered = dict.fromkeys(row["feed"] for row in made.feeds.rows)
+    bought = {row["feed"] for row in made.feeds.rows if row["bought"]}
+    feeds = [feed] if feed else [] if mode else [name for name in offered if name not in bought]
+    try:
+        return [*(why_not_feed(made, name) for name in feeds), *([why_not_mode(made, mode)] if mode else [])]
+    except ValueError as error:
+        _stop(str(error), EXIT_INPUT)
+    except ArithmeticError as error:
+        _stop(str(error), EXIT_FAILED)
+
+
+def _plan_if_possible(scenario: Scenario) -> Plan | None:
+    """The plan of a scenario, None when limits clash; ends the command when there is none for another reason."""
+    from olefinlp.answers.balances import BalanceError
+    from olefinlp.answers.plan import NoPlan, make_plan
+    from olefinlp.lp.certificate import CertificateError
+    from olefinlp.lp.solver import EXIT_CODES, Status
+
+    try:
+        return make_plan(scenario)
+    except NoPlan as error:
+        if error.status is Status.INFEASIBLE:
+            return None
+        _stop(str(error), EXIT_CODES[error.status])
+    except (CertificateError, BalanceError) as error:
+        _stop(f"{error}\n{NOT_PROVEN}", EXIT_FAILED)
+
+
 def _scenario_path(path: Path | None) -> Path:
     from olefinlp.starter_files import default_scenario
 
@@ -276,7 +339,7 @@ def _make_plan(path: Path, price_case: str | None, json_file: str | None) -> Pla
         _stop(str(error), EXIT_CODES[error.status])
     except (CertificateError, BalanceError) as error:
         _failure_json(json_file, {"status": "not_proven", "message": str(error)})
-        _stop(f"{error}\nhint: this is a fault of the tool or of extreme numbers, not a plan; please report it", EXIT_FAILED)
+        _stop(f"{error}\n{NOT_PROVEN}", EXIT_FAILED)
 
 
 def _input_record(error: InputError) -> dict[str, Any]:

@@ -1,7 +1,7 @@
 """Every rule of the algebra as text, on the smallest plant that shows it, against a file that a person has read.
 
-The files in `golden/` are never written by a test. To make one: `python tests/test_golden_lp.py FAMILY > tests/golden/FAMILY.txt`,
-then read it against the rule's docstring. A period has 100 hours; numbers as %.6g; terms in the order of their names.
+The files in `golden/lp/` are never written by a test. To make one, `python tests/test_golden_lp.py FAMILY` prints its text: put
+it there and read it against the rule. A period has 100 hours; numbers as %.6g; terms in the order of their names.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ from plants import merged, read
 from olefinlp.lp.algebra import TEXTS, build_model
 from olefinlp.lp.compile import LabelledLp, compile_model
 
-GOLDEN = Path(__file__).resolve().parent / "golden"
+GOLDEN = Path(__file__).resolve().parent / "golden" / "lp"
 
 BASE: dict[str, Any] = {
     "yields": "feed, severity, ethylene, rest\nnaphtha, base, 40, 60",
@@ -28,7 +28,7 @@ BASE: dict[str, Any] = {
     "scenario": {"months": [{"name": "m", "hours": 100}], "feeds": {"naphtha": {"spot": {"max": "9 kt", "price": "500 USD/t"}}}},
     "prices": {"ethylene": 1000, "rest": 200},
 }
-STEPS = [{"up_to": "1 kt", "price": "250 USD/t"}, {"up_to": "4 kt", "price": "230 USD/t"}]
+STEPS = [{"up_to": f"{end} kt", "price": f"{price} USD/t"} for end, price in ((1, 250), (3, 240), (4, 230))]
 TWO = [{"name": "m1", "hours": 100}, {"name": "m2", "hours": 100}]
 TANK = {"opening": "1 kt", "min": "0.5 kt", "max": "3 kt", "holding": "0.1 USD/t/h", "end": "at least opening"}
 DECOKED = "group, feed, severity, charge, run_length, decoke\nfurnaces, naphtha, base, 10, 20, 48"

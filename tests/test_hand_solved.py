@@ -102,7 +102,13 @@ def test_take_or_pay(tmp_path: Path, ethylene: float, taken: float, margin: floa
 TIERS = {
     "yields": "feed, severity, ethylene, water\nethane, base, 50, 50",
     "scenario": """
-        feeds: {ethane: {pipeline: {tiers: [{up_to: 4 kt, price: 300 USD/t}, {up_to: 10 kt, price: 380 USD/t}]}}}
+        feeds:
+          ethane:
+            pipeline:
+              tiers:
+                - {up_to: 4 kt, price: 300 USD/t}
+                - {up_to: 6 kt, price: 340 USD/t}
+                - {up_to: 10 kt, price: 380 USD/t}
         outlets:
           water_sale: {max: unlimited, price: 0 USD/t}
           ethylene_sale:
@@ -113,20 +119,20 @@ TIERS = {
 
 def test_steps_of_a_purchase_and_a_sale(tmp_path: Path) -> None:
     """Half of a tonne is ethylene: 500 a tonne for the first 6 kt charged (3 kt sold at 1000), then 400. Ethane costs 300 for
-    the first 4 kt, then 380. Gains 200 up to 4 kt, 120 up to 6, 20 up to the 8 kt that one furnace of 8 t/h can do:
-    800 + 240 + 40 = 1080, an hour is worth 8 · 20 = 160."""
+    the first 4 kt, 340 up to 6 kt, then 380. Gains 200 up to 4 kt, 160 up to 6, 20 up to the 8 kt that one furnace of 8 t/h
+    can do: 800 + 320 + 40 = 1160, an hour is worth 8 · 20 = 160."""
     plan = planned(tmp_path, **TIERS, modes="group, feed, severity, charge\nfurnaces, ethane, base, 8")
-    margin_is(plan, 1080)
+    margin_is(plan, 1160)
     q = plan.quantities
-    assert [q.value("bought", "ethane.pipeline", k, "month") for k in "12"] == [near(4), near(4)]
+    assert [q.value("bought", "ethane.pipeline", k, "month") for k in "123"] == [near(4), near(2), near(2)]
     assert [q.value("sold", "ethylene_sale", k, "month") for k in "12"] == [near(3), near(1)]
     assert worth_and_rate(plan, "furnace hours")[0] == near(160)
 
 
 def test_the_end_of_the_last_step_is_worth_what_a_tonne_more_gives(tmp_path: Path) -> None:
-    """With 20 t/h the furnace is not full: all 10 kt are bought, margin 800 + 240 + 80 = 1120, a tonne beyond is worth 20."""
+    """With 20 t/h the furnace is not full: all 10 kt are bought, margin 800 + 320 + 80 = 1200, a tonne beyond is worth 20."""
     plan = planned(tmp_path, **TIERS, modes="group, feed, severity, charge\nfurnaces, ethane, base, 20")
-    margin_is(plan, 1120)
+    margin_is(plan, 1200)
     row = limit(plan, "purchase", "ethane pipeline")
     assert (row["state"], row["worth"], row["rate"]) == ("at maximum", near(20), near(20))
 

@@ -137,6 +137,9 @@ def test_a_feasible_plan_that_is_not_the_best_is_caught(every_plan: Plan) -> Non
         found = certify(lp, replace(half, row_dual=dual))
         assert found.primal <= found.tolerance
         assert not found.holds
+    of_best, of_none = (certify(lp, replace(half, row_dual=dual)) for dual in (best.row_dual, np.zeros(len(lp.rows))))
+    assert of_best.dual <= of_best.tolerance < min(of_best.complementarity, of_best.gap)
+    assert of_none.dual > of_none.tolerance
 
 
 # ---------------------------------------------------------------------------------- signs

@@ -225,7 +225,7 @@ def test_relaxing_a_limit_in_the_file_never_lowers_the_margin(march: Plan, item:
     assert make_plan(march.scenario.with_({item: looser})).margin >= march.margin * (1 - 1e-10)
 
 
-# ---------------------------------------------------------------------------------- shipped files in another order, at other prices
+# ---------------------------------------------------------------------------------- shipped files, other order, other prices
 
 
 def shuffled(data: Any, rng: random.Random) -> Any:
@@ -281,7 +281,7 @@ def test_the_order_of_rows_and_names_changes_nothing(
 
 @pytest.mark.parametrize("k", [0.5, 3.0])
 def test_all_prices_of_march_times_k(march: Plan, root: Path, tmp_path: Path, k: float) -> None:
-    """Prices of the table and costs of the scenario times k; fractions of another price stay. Same purchases, k times the margin."""
+    """Prices of the table and costs of the scenario times k (fractions of another price stay): same purchases, k times margin."""
     home = copied(root, tmp_path)
     table = home / "scenarios" / "prices" / "brackwater.csv"
     with open(table, newline="", encoding="utf-8") as file:

@@ -117,10 +117,11 @@ def break_even_prices(plan: Plan, parcels: Sequence[float] | None = None) -> Ans
     size = sum(abs(line.amount) for line in plan.lines)
     rows: list[Record] = []
     parcel_rows: list[Record] = []
-    for offer in offers(plan):
-        value = Value(plan.neighbours, offer, plan.quantities.case.sources[offer.source].tiers)
-        rows.append(_break_even(offer, value, size))
-        parcel_rows += _parcels(offer, value, parcels)
+    with plan.neighbours.proven_together():
+        for offer in offers(plan):
+            value = Value(plan.neighbours, offer, plan.quantities.case.sources[offer.source].tiers)
+            rows.append(_break_even(offer, value, size))
+            parcel_rows += _parcels(offer, value, parcels)
     note = (
         "All else re-optimised, other prices held. A worth below the price of a feed that is bought shows a contract that binds."
     )

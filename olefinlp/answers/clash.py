@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from olefinlp.inputs.case import Case, Limit
-from olefinlp.inputs.findings import Place
+from olefinlp.inputs.findings import Place, shown
 from olefinlp.lp.clash import MOST_SETS, Side, clashing_sets
 from olefinlp.lp.compile import LabelledLp
 from olefinlp.lp.solver import Outcome
@@ -23,9 +23,13 @@ class ClashingLimit:
 
 @dataclass(frozen=True)
 class Clash:
-    """Sets of limits that cannot all be met; in each, leaving out any one makes the rest possible."""
+    """Sets of limits that cannot all be met; in each, leaving out any one makes the rest possible.
+
+    `file` is the scenario's, as a person would type it.
+    """
 
     sets: tuple[tuple[ClashingLimit, ...], ...]
+    file: str = ""
 
     def __str__(self) -> str:
         if not self.sets:
@@ -38,10 +42,10 @@ class Clash:
         for position, limits in enumerate(self.sets):
             lines.append(_headline(position, len(limits)))
             lines += [f"  {limit.text:<{width}}  {limit.place or ''}{_because(limit)}".rstrip() for limit in limits]
-        if len(self.sets) == MOST_SETS:
-            return "\n".join([*lines, "hint: relax one of each set, as little as is needed; more limits may clash beyond these"])
         word = "one of them" if len(self.sets) == 1 else "one of each set"
-        return "\n".join([*lines, f"hint: relax {word}, as little as is needed; no other limit need be touched"])
+        rest = "more limits may clash beyond these" if len(self.sets) == MOST_SETS else "no other limit need be touched"
+        explain = f"; `olefinlp explain {self.file}` says which, and what it costs" if self.file else ""
+        return "\n".join([*lines, f"hint: relax {word}, as little as is needed; {rest}{explain}"])
 
 
 def _because(limit: ClashingLimit) -> str:
@@ -59,7 +63,8 @@ def find_clash(case: Case, lp: LabelledLp) -> Clash | None:
     sets = clashing_sets(lp)
     if sets is None:
         return None
-    return Clash(tuple(tuple(_in_words(case.limits[_key(lp, side)], side, many) for side in sides) for sides in sets))
+    words = tuple(tuple(_in_words(case.limits[_key(lp, side)], side, many) for side in sides) for sides in sets)
+    return Clash(words, shown(case.scenario.path))
 
 
 def _key(lp: LabelledLp, side: Side) -> tuple[str, ...]:

@@ -22,12 +22,12 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from olefinlp.answers import money
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.plan_tables import worth_at_gate
 from olefinlp.answers.quantities import Quantities
 from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.answers.words import amount as amount_words
+from olefinlp.inputs.case import PER_THOUSAND, Case
 from olefinlp.inputs.findings import near_name
 from olefinlp.inputs.ratios import utility_amount
 from olefinlp.lp.compile import Floats, Label
@@ -37,18 +37,19 @@ if TYPE_CHECKING:
 
 PRODUCTS, FEED, FIRING, UTILITIES, EMISSIONS = "products", "feed", "firing", "utilities", "emissions"
 FURNACES, CREWS, UNITS, LIMITS, VARIABLE = "furnace hours", "decoke crew", "recovery units", "limits", "variable costs"
-BUYING, GATE = "limits on buying", "worth at the gate"
-GROUPS = (PRODUCTS, FEED, BUYING, FIRING, UTILITIES, EMISSIONS, FURNACES, CREWS, UNITS, LIMITS, VARIABLE)
+PRICE, OFFER, BUYING, GATE = "price", "terms of the offer", "limits on buying", "worth at the gate"
+GROUPS = (PRODUCTS, FEED, PRICE, OFFER, BUYING, FIRING, UTILITIES, EMISSIONS, FURNACES, CREWS, UNITS, LIMITS, VARIABLE)
 DEFINITIONS = {"component_balance": "component_made", "cut_balance": "cut_made", "unit_load_balance": "unit_load"}
-_NAMED = (LIMITS, UTILITIES, BUYING)
+AT_THE_GATE = (FEED, PRICE, OFFER, BUYING)
+_NAMED = (LIMITS, UTILITIES, OFFER, BUYING)
 EXACT = 1e-9
 PER = {"mass": "t", "heat": "GJ LHV", "power": "MWh"}
 _CAUSES = {"component_made": " of products", "cut_made": " of products", "unit_load": " of recovery units"}
 _LIMIT_GROUPS = {
     "decoke_crew_hours_limit": CREWS,
     "unit_load_limit": UNITS,
-    "purchase_limit": BUYING,
-    "take_or_pay_limit": BUYING,
+    "purchase_limit": OFFER,
+    "take_or_pay_limit": OFFER,
 }
 
 
@@ -101,7 +102,8 @@ def terms(plan: Plan, given: Mapping[Label, float], month: str) -> list[Term]:
     """The account of given charges, purchases or components with all that follows; products by cut."""
     x = follow(plan, given, month)
     found: dict[tuple[str, str], Term] = {}
-    for term in (*_from_rows(plan, x), *_from_money(plan, x)):
+    met = (term for term in (*_from_rows(plan, x), *_from_money(plan, x, month)) if term.amount)
+    for term in met:
         before = found.get((term.group, term.item))
         if before is not None:
             term = replace(before, amount=before.amount + term.amount, value=before.value + term.value)
@@ -157,7 +159,7 @@ def _of_entry(q: Quantities, entry: _Entry) -> Iterator[Term]:
     else:
         label = q.case.limits[(family.removesuffix("_limit"), *entry.row[1:])].label
         of_feed = entry.column[0] == "bought" and q.case.sources[entry.column[1]].kind == "feeds"
-        group = BUYING if of_feed else _LIMIT_GROUPS.get(family, LIMITS)
+        group = _LIMIT_GROUPS.get(family, BUYING if of_feed else LIMITS)
         yield _in_written_unit(q, entry.row, entry.term(group, label, ""))
 
 
@@ -193,16 +195,26 @@ def _of_losses(q: Quantities, utility: str) -> float:
     return q.case.loss * sum(use.sign * utility_amount(plant, utility, use.of, use.item, use.amount) for use in uses)
 
 
-def _from_money(plan: Plan, x: Floats) -> Iterator[Term]:
+def _from_money(plan: Plan, x: Floats, month: str) -> Iterator[Term]:
     """Prices and variable costs that are met directly."""
-    groups = {money.CONTENT: PRODUCTS, money.VARIABLE: VARIABLE, money.PURCHASES: FEED}
-    for line in money.money_lines(part_of(plan, x)):
-        if line.quantity:
-            item = line.price_item.split(".")[1] if line.group == money.CONTENT else line.item
-            item = f"price of {item}" if line.group == money.PURCHASES else item
-            unit = line.price_unit.partition("/")[2] or "piece"
-            amount = line.quantity * (line.factor if unit == "piece" else 1.0)
-            yield Term(groups[line.group], item, amount, unit, line.price, line.amount)
+    q, case = part_of(plan, x), plan.quantities.case
+    for (cut, item), parts in case.content.items():
+        yield _priced(case, PRODUCTS, cut, f"contents.{cut}.{item}", month, q.total(parts, month))
+    for source, data in case.sources.items():
+        for step in data.tiers:
+            bought = q.value("bought", source, str(step), month)
+            yield _priced(case, PRICE, source, case.purchase_item(source, step), month, bought)
+    for cost in case.costs:
+        yield _priced(case, VARIABLE, cost.name, cost.price_item, month, q.total(cost.parts, month))
+
+
+def _priced(case: Case, group: str, item: str, price_item: str, month: str, quantity: float) -> Term:
+    """A quantity per t at its price; pieces (decokes) are counted per thousand t."""
+    price = case.prices[price_item, month]
+    per = price.unit_used.partition("/")[2]
+    amount = quantity if per else quantity * PER_THOUSAND
+    sign = 1 if group == PRODUCTS else -1
+    return Term(group, item, amount, per or "piece", price.value, sign * amount * price.value)
 
 
 # ---------------------------------------------------------------------------------- accounts
@@ -262,7 +274,7 @@ def _account(plan: Plan, given: Mapping[Label, float], month: str, worths: Mappi
     of = {label[0]: label for label in given}
     mode, source = of.get("charge", ("", ""))[1], of.get("bought", ("", ""))[1]
     used = q.value(*of["charge" if mode else "bought"])
-    at_gate = math.fsum(line.value for line in lines if line.group not in (FEED, BUYING))
+    at_gate = math.fsum(line.value for line in lines if line.group not in AT_THE_GATE)
     group, severity = q.case.mode_group.get(mode, ""), q.case.mode_severity.get(mode, "")
     return Account(month, source, group, severity, used, lines, made, worths, total, at_gate)
 
@@ -399,7 +411,8 @@ def _ways_table(plan: Plan, accounts: list[Account]) -> Table:
     )
     rows: list[Record] = [
         {"month": a.month, "source": a.source, "group": a.group, "severity": a.severity, "used": a.used}
-        | {"worth": a.worth, "price": -a.sum_of(FEED), "buying": a.sum_of(BUYING), "gain": a.total}
+        | {"worth": a.worth, "price": -a.sum_of(FEED, PRICE)}
+        | {"buying": a.sum_of(OFFER, BUYING), "gain": a.total}
         for a in accounts
     ]
     note = "Gain = worth − price + limits on buying. Of a recycle the price is the worth of its cut."
@@ -496,11 +509,11 @@ def _items(a: Account) -> str:
     sums: dict[str, float] = {}
     for line in a.lines:
         words = f"{line.item} load" if line.group == UNITS else line.item if line.group in _NAMED else line.group
-        if line.group not in (PRODUCTS, FEED):
+        if line.group not in (PRODUCTS, FEED, PRICE):
             sums[words] = sums.get(words, 0.0) + line.value
     largest = sorted((pair for pair in sums.items() if pair[1] < 0), key=lambda pair: pair[1])[:3]
     feed = "the feed costs" if a.source else "the feed is worth"
-    text = f"its products are worth {a.sum_of(PRODUCTS):,.1f}, {feed} {-a.sum_of(FEED):,.1f}"
+    text = f"its products are worth {a.sum_of(PRODUCTS):,.1f}, {feed} {-a.sum_of(FEED, PRICE):,.1f}"
     taken = [f"{-value:,.1f} of {words}" for words, value in largest]
     return text + (f" and it takes {', '.join(taken)}" if taken else "")
 
@@ -522,7 +535,7 @@ def _feed_sentence(plan: Plan, ways: list[Account], name: str, month: str) -> st
 def _source_sentence(plan: Plan, best: Account, head: str, where: str) -> str:
     q, source, month = plan.quantities, best.source, best.month
     worth = worth_at_gate(q, source, next_step(plan, source, month), month)
-    against = f"worth {worth:,.1f} {plan.currency}/t against a price of {-best.sum_of(FEED):,.1f}"
+    against = f"worth {worth:,.1f} {plan.currency}/t against a price of {-best.sum_of(PRICE):,.1f}"
     bought = q.bought(source, month)
     if bought:
         return f"{head} is used: {amount_words(bought)} kt are bought; one more tonne is {against}."

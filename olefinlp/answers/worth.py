@@ -30,11 +30,13 @@ def worth_of_limits(plan: Plan, reach: float = REACH) -> Answer:
     which each holds, the worth of the next step beyond them.
     """
     q = plan.quantities
+    size = sum(abs(line.amount) for line in plan.lines)
     rows = []
-    for limit in q.case.limits.values():
-        record = limit_record(q, limit)
-        if record["state"] in ("at maximum", "at minimum", "fixed") and record["worth"] > 0:
-            rows.append(_worth(plan, limit, record, reach))
+    with plan.neighbours.proven_together():
+        for limit in q.case.limits.values():
+            record = limit_record(q, limit)
+            if record["state"] in ("at maximum", "at minimum", "fixed") and record["worth"] > 0:
+                rows.append(_worth(plan, limit, record, reach, size))
     columns = (
         Column("month", "Month"),
         Column("limit", "Limit"),
@@ -73,7 +75,7 @@ def limit_curve(neighbours: Neighbours, limit: Limit, low_side: bool) -> Evaluat
     return evaluate
 
 
-def _worth(plan: Plan, limit: Limit, record: Record, reach: float) -> Record:
+def _worth(plan: Plan, limit: Limit, record: Record, reach: float, size: float) -> Record:
     """Both sides of one limit, in the unit in which people read it."""
     q, neighbours = plan.quantities, plan.neighbours
     label = (f"{limit.family}_limit", *limit.key)
@@ -82,7 +84,6 @@ def _worth(plan: Plan, limit: Limit, record: Record, reach: float) -> Record:
     at = (limit.low if low_side else limit.high) or 0.0
     base = Point(at, neighbours.base.objective, dual)
     evaluate = limit_curve(neighbours, limit, low_side)
-    size = sum(abs(line.amount) for line in plan.lines)
     span = reach * (abs(at) or _typical(plan, limit))
     up, down = side(evaluate, base, span, size), side(evaluate, base, -span, size)
     loosened, tightened = (down, up) if low_side else (up, down)

@@ -6,6 +6,7 @@ as tightly as one of 200 kt. A failed certificate is an error, never a plan.
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,6 +17,10 @@ from olefinlp.lp.solver import Solution
 TOLERANCE = 1e-6
 FLOOR = 1e-5
 """Where nothing moves, a residual is compared with this share of the largest that moves elsewhere."""
+TINY = 1e-300
+ROUNDING = 1e-12
+"""Share of a sum's terms within which it is what rounding leaves of nothing."""
+Bounds = Mapping[int, tuple[float, float]]
 
 
 class CertificateError(Exception):
@@ -36,8 +41,65 @@ class Certificate:
 
     @property
     def holds(self) -> bool:
-        """Whether every residual is within the tolerance."""
-        return max(self.primal, self.dual, self.complementarity, self.gap) <= self.tolerance
+        """Whether every residual is within the tolerance; one that is not a number is not."""
+        return all(r <= self.tolerance for r in (self.primal, self.dual, self.complementarity, self.gap))
+
+
+@dataclass(frozen=True, slots=True)
+class Terms:
+    """Prices and limits of a program, limits of rows first and then of columns.
+
+    Programs that share a matrix differ in nothing else.
+    """
+
+    cost: Floats
+    low: Floats
+    high: Floats
+
+    def with_(self, cost: Floats | None, rows: Bounds, columns: Bounds, first_column: int) -> Terms:
+        """The terms with other prices, and other limits of some rows and columns."""
+        cost = self.cost if cost is None else cost
+        if not rows and not columns:
+            return Terms(cost, self.low, self.high)
+        low, high = self.low.copy(), self.high.copy()
+        for row, pair in rows.items():
+            low[row], high[row] = pair
+        for column, pair in columns.items():
+            low[first_column + column], high[first_column + column] = pair
+        return Terms(cost, low, high)
+
+
+def terms_of(lp: LabelledLp) -> Terms:
+    """The terms that a program is written with."""
+    return Terms(lp.cost, np.concatenate((lp.row_low, lp.low)), np.concatenate((lp.row_high, lp.high)))
+
+
+@dataclass(frozen=True, slots=True)
+class Sums:
+    """What the values and duals of a solution come to, worked out again."""
+
+    x: Floats
+    y: Floats
+    activity: Floats
+    row_sizes: Floats
+    """Σ |a x| of each row."""
+    reduced: Floats
+    """c − Aᵀy of each column."""
+    dual_sizes: Floats
+    """|c| + Σ |a y| of each column."""
+
+
+def sums_of(lp: LabelledLp, cost: Floats, x: Floats, y: Floats) -> Sums:
+    """A x and c − Aᵀy with the sizes of their terms."""
+    work, dual_work = lp.value * x[lp.index], lp.value * y[lp.row_of]
+    return Sums(
+        x=x,
+        y=y,
+        activity=lp.by_row(work),
+        row_sizes=lp.by_row(np.abs(work)),
+        reduced=cost - lp.by_column(dual_work),
+        dual_sizes=np.abs(cost) + lp.by_column(np.abs(dual_work)),
+    )
 
 
 def certify(lp: LabelledLp, solution: Solution) -> Certificate:
@@ -49,21 +111,47 @@ def certify(lp: LabelledLp, solution: Solution) -> Certificate:
     complementarity: |dual × slack| over the money that moves, Σ|c x|;
     gap: margin less Σ dual × limit, over the same.
     """
-    x, y = solution.x, solution.row_dual
-    activity = lp.activity(x)
-    reduced = lp.cost - lp.gathered(y)
-    primal, worst_row = _primal(lp, x, activity)
-    dual, worst_column = _dual(lp, x, y, reduced)
-    money = _money(lp, x)
-    row_limit, row_slack = _active(y, lp.row_low, lp.row_high, activity)
-    column_limit, column_slack = _active(_kept(lp, reduced, y), lp.low, lp.high, x)
-    kept = _kept(lp, reduced, y)
-    complementarity = max(_largest(np.abs(y * row_slack)), _largest(np.abs(kept * column_slack))) / money
-    dual_objective = float(y @ row_limit + kept @ column_limit) + lp.offset
-    margin = float(lp.cost @ x) + lp.offset
-    gap = abs(margin - dual_objective) / money
-    worst = worst_row if primal >= dual else worst_column
-    return Certificate(primal, dual, complementarity, gap, dual_objective, worst)
+    return certificates(lp, [(terms_of(lp), sums_of(lp, lp.cost, solution.x, solution.row_dual))])[0]
+
+
+def certificates(lp: LabelledLp, solved: Sequence[tuple[Terms, Sums]]) -> list[Certificate]:
+    """A certificate for each of some programs that share the matrix of `lp`; worked out together, which is quicker.
+
+    Arrays have a line for each program, and in it the rows and then the columns of the program.
+    """
+    rows = len(lp.rows)
+    cost, low, high = (np.array([getattr(terms, name) for terms, _ in solved]) for name in ("cost", "low", "high"))
+    x, row_sizes, dual_sizes = (np.array([getattr(sums, n) for _, sums in solved]) for n in ("x", "row_sizes", "dual_sizes"))
+    value = np.array([np.concatenate((sums.activity, sums.x)) for _, sums in solved])
+    dual = np.array([np.concatenate((sums.y, sums.reduced)) for _, sums in solved])
+    open_low, open_high = np.isinf(low), np.isinf(high)
+    money = _money(cost, x, lp.offset)
+
+    sizes = np.concatenate((_at_least(row_sizes), _at_least(np.abs(x))), axis=1)
+    written = np.where(open_low, 0.0, np.abs(low)) + np.where(open_high, 0.0, np.abs(high))
+    moved = np.concatenate((row_sizes, np.abs(x)), axis=1)
+    broken = np.maximum(np.maximum(low - value, value - high), 0.0) / np.maximum(moved + written, sizes)
+
+    wrong = np.maximum(dual * open_high, -dual * open_low)
+    wrong[:, :rows] *= sizes[:, :rows] / money
+    wrong[:, rows:] /= _at_least(dual_sizes)
+
+    dual[:, rows:][np.abs(dual[:, rows:]) <= ROUNDING * dual_sizes] = 0.0
+    limit = np.where(dual > 0, high, low)  # the one that a dual's sign points at (maximising)
+    usable = (dual != 0) & np.isfinite(limit)
+    limit = np.where(usable, limit, 0.0)
+    slack = (limit - value) * usable
+    dual_objective = (dual * limit).sum(axis=1) + lp.offset
+    margin = (cost * x).sum(axis=1) + lp.offset
+
+    primal_at, dual_at = broken.argmax(axis=1), wrong.argmax(axis=1)
+    cases = np.arange(len(solved))
+    primal, wrong_most = broken[cases, primal_at], wrong[cases, dual_at]
+    complementarity = np.abs(dual * slack).max(axis=1) / money[:, 0]
+    gap = np.abs(margin - dual_objective) / money[:, 0]
+    worst = np.where(primal >= wrong_most, primal_at, dual_at)
+    numbers = [array.tolist() for array in (primal, wrong_most, complementarity, gap, dual_objective, worst)]
+    return [Certificate(p, d, c, g, z, _name(lp, at)) for p, d, c, g, z, at in zip(*numbers, strict=True)]
 
 
 def prove(lp: LabelledLp, solution: Solution) -> Certificate:
@@ -71,7 +159,11 @@ def prove(lp: LabelledLp, solution: Solution) -> Certificate:
 
     Raises `CertificateError` when the solution is not a proven optimum.
     """
-    certificate = certify(lp, solution)
+    return proven(certify(lp, solution))
+
+
+def proven(certificate: Certificate) -> Certificate:
+    """The certificate itself; raises `CertificateError` unless it holds."""
     if not certificate.holds:
         raise CertificateError(
             "the solver's answer is not a proven optimum: "
@@ -82,67 +174,23 @@ def prove(lp: LabelledLp, solution: Solution) -> Certificate:
     return certificate
 
 
-def _primal(lp: LabelledLp, x: Floats, activity: Floats) -> tuple[float, str]:
-    row_size = lp.sizes(x) + _finite_size(lp.row_low) + _finite_size(lp.row_high)
-    rows = _violation(activity, lp.row_low, lp.row_high) / _at_least(row_size, lp.sizes(x))
-    column_size = np.abs(x) + _finite_size(lp.low) + _finite_size(lp.high)
-    columns = _violation(x, lp.low, lp.high) / _at_least(column_size, np.abs(x))
-    worst = max((rows, lp.rows), (columns, lp.columns), key=lambda pair: _largest(pair[0]))
-    return _largest(worst[0]), _name(worst[1], worst[0])
-
-
-def _dual(lp: LabelledLp, x: Floats, y: Floats, reduced: Floats) -> tuple[float, str]:
-    size = _dual_size(lp, y)
-    wrong = np.where(np.isinf(lp.high), np.maximum(reduced, 0), 0) + np.where(np.isinf(lp.low), np.maximum(-reduced, 0), 0)
-    columns = wrong / _at_least(size, size)
-    wrong_rows = np.where(np.isinf(lp.row_high), np.maximum(y, 0), 0) + np.where(np.isinf(lp.row_low), np.maximum(-y, 0), 0)
-    sizes = lp.sizes(x)
-    rows = wrong_rows * _at_least(sizes, sizes) / _money(lp, x)
-    worst = max((columns, lp.columns), (rows, lp.rows), key=lambda pair: _largest(pair[0]))
-    return _largest(worst[0]), _name(worst[1], worst[0])
-
-
-def _money(lp: LabelledLp, x: Floats) -> float:
+def _money(cost: Floats, x: Floats, offset: float) -> Floats:
     """The money that moves, Σ|c x|; where next to none does, a small share of what could."""
-    size = np.abs(x)
-    could = float(np.abs(lp.cost).max(initial=0.0)) * float(size.max(initial=0.0))
-    return max(float(np.abs(lp.cost) @ size) + abs(lp.offset), FLOOR * could, 1e-300)
+    prices, size = np.abs(cost), np.abs(x)
+    could = prices.max(axis=1, initial=0.0, keepdims=True) * size.max(axis=1, initial=0.0, keepdims=True)
+    moves = (prices * size).sum(axis=1, keepdims=True) + abs(offset)
+    money: Floats = np.maximum(np.maximum(moves, FLOOR * could), TINY)
+    return money
 
 
-def _dual_size(lp: LabelledLp, y: Floats) -> Floats:
-    work = np.abs(lp.value * np.repeat(y, np.diff(lp.starts)))
-    return np.abs(lp.cost) + np.bincount(lp.index, weights=work, minlength=len(lp.columns))
+def _at_least(sizes: Floats) -> Floats:
+    """Sizes with a floor: what does not move is compared with what moves elsewhere."""
+    floor = np.maximum(FLOOR * sizes.max(axis=1, initial=0.0, keepdims=True), TINY)
+    floored: Floats = np.maximum(sizes, floor)
+    return floored
 
 
-def _kept(lp: LabelledLp, reduced: Floats, y: Floats) -> Floats:
-    """Reduced costs without the rounding left of sums that cancel."""
-    return np.where(np.abs(reduced) <= 1e-12 * _dual_size(lp, y), 0.0, reduced)
-
-
-def _active(dual: Floats, low: Floats, high: Floats, value: Floats) -> tuple[Floats, Floats]:
-    """The limit that a dual's sign points at (maximising), and the slack to it; 0 where there is none."""
-    limit = np.where(dual > 0, high, low)
-    usable = (dual != 0) & np.isfinite(limit)
-    return np.where(usable, limit, 0.0), np.where(usable, limit - value, 0.0)
-
-
-def _violation(value: Floats, low: Floats, high: Floats) -> Floats:
-    return np.maximum(np.maximum(low - value, value - high), 0.0)
-
-
-def _finite_size(bound: Floats) -> Floats:
-    return np.where(np.isfinite(bound), np.abs(bound), 0.0)
-
-
-def _at_least(size: Floats, all_sizes: Floats) -> Floats:
-    """Sizes with a floor: a row in which nothing moves is compared with what moves elsewhere."""
-    floor = FLOOR * float(np.max(all_sizes, initial=0.0))
-    return np.maximum(size, max(floor, 1e-300))
-
-
-def _largest(values: Floats) -> float:
-    return float(np.max(values, initial=0.0))
-
-
-def _name(labels: tuple[tuple[str, ...], ...], values: Floats) -> str:
-    return ".".join(labels[int(np.argmax(values))]) if len(values) else ""
+def _name(lp: LabelledLp, place: int) -> str:
+    """A row, or past the rows a column, in words."""
+    rows = len(lp.rows)
+    return ".".join(lp.rows[place] if place < rows else lp.columns[place - rows])

@@ -5,6 +5,7 @@ Everything after this file works on arrays: the solver, the certificate, exports
 
 from __future__ import annotations
 
+import functools
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -44,19 +45,46 @@ class LabelledLp:
     row_at: dict[Label, int] = field(repr=False)
     column_at: dict[Label, int] = field(repr=False)
 
+    @functools.cached_property
+    def row_of(self) -> NDArray[np.intp]:
+        """The row of each non-zero."""
+        return np.repeat(np.arange(len(self.rows)), np.diff(self.starts))
+
+    @functools.cached_property
+    def _filled(self) -> NDArray[np.intp]:
+        """Rows that have a non-zero."""
+        return np.flatnonzero(np.diff(self.starts))
+
+    @functools.cached_property
+    def _starts(self) -> NDArray[np.intp]:
+        """Where the rows that have a non-zero start."""
+        return self.starts[self._filled].astype(np.intp)
+
+    def by_row(self, terms: Floats) -> Floats:
+        """Terms of the non-zeros summed by row."""
+        if len(self._filled) == len(self.rows):
+            return np.add.reduceat(terms, self._starts)
+        sums = np.zeros(len(self.rows))
+        if len(terms):
+            sums[self._filled] = np.add.reduceat(terms, self._starts)
+        return sums
+
+    def by_column(self, terms: Floats) -> Floats:
+        """Terms of the non-zeros summed by column."""
+        sums: Floats = np.bincount(self.index, weights=terms, minlength=len(self.columns)).astype(float, copy=False)
+        return sums
+
     def activity(self, x: Floats) -> Floats:
         """A x, by row."""
-        return np.add.reduceat(np.append(self.value * x[self.index], 0.0), self.starts[:-1]) * (np.diff(self.starts) > 0)
+        return self.by_row(self.value * x[self.index])
 
     def gathered(self, y: Floats) -> Floats:
         """Aᵀ y, by column."""
-        weights = self.value * np.repeat(y, np.diff(self.starts))
-        return np.bincount(self.index, weights=weights, minlength=len(self.columns)).astype(float)
+        return self.by_column(self.value * y[self.row_of])
 
     def sizes(self, x: Floats) -> Floats:
         """Σ |a x| of each row: the size that its residual is compared with."""
-        work = np.append(np.abs(self.value * x[self.index]), 0.0)
-        return np.add.reduceat(work, self.starts[:-1]) * (np.diff(self.starts) > 0)
+        return self.by_row(np.abs(self.value * x[self.index]))
 
 
 def compile_model(model: pyo.ConcreteModel) -> LabelledLp:

@@ -7,19 +7,23 @@ A row `margin_kept`, free in the base, lets a question hold the margin and optim
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import replace
+import contextlib
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
 
 import highspy
 import numpy as np
 
-from olefinlp.lp.certificate import CertificateError, certify, prove
-from olefinlp.lp.compile import Floats, LabelledLp
-from olefinlp.lp.solver import Outcome, Solution, Solver, Status
+from olefinlp.lp.certificate import Bounds, Sums, Terms, certificates, prove, proven, sums_of, terms_of
+from olefinlp.lp.compile import Floats, Integers, LabelledLp
+from olefinlp.lp.solver import Solution, Solver, Status
 from olefinlp.lp.steps import Point
 
 MARGIN_ROW = ("margin_kept",)
-Bounds = Mapping[int, tuple[float, float]]
+FREE = 1e-9
+"""Share of the largest price below which a dual may be what rounding leaves of nothing."""
+TOGETHER = 16
+"""How many optima are proven at once, where a question allows it."""
 
 
 class NeighbourError(Exception):
@@ -42,6 +46,15 @@ def with_margin_row(lp: LabelledLp) -> LabelledLp:
     )
 
 
+@dataclass(frozen=True, slots=True)
+class Found:
+    """Values and duals as the solver gives them."""
+
+    x: Floats
+    row_dual: Floats
+    iterations: int
+
+
 class Neighbours:
     """Solves a program around its base optimum; `solves` counts how often."""
 
@@ -54,20 +67,52 @@ class Neighbours:
         if outcome.solution is None:
             raise NeighbourError(f"the base has no optimum: {outcome.message}")
         self.base = outcome.solution
+        prove(self.lp, self.base)
         self.basis = self.solver.highs.getBasis()
+        self.terms = terms_of(self.lp)
         self.solves = 1
+        self._waiting: list[tuple[Terms, Sums]] | None = None
+
+    @contextlib.contextmanager
+    def proven_together(self) -> Iterator[None]:
+        """Within it, optima are proven some at a time, which is quicker, and all of them by its end.
+
+        Raises `CertificateError` at its end, or before, when one of them cannot be proven.
+        """
+        if self._waiting is not None:
+            yield
+            return
+        self._waiting = []
+        try:
+            yield
+            self._prove_waiting()
+        finally:
+            self._waiting = None
+
+    def _prove_waiting(self) -> None:
+        if self._waiting:
+            for certificate in certificates(self.lp, self._waiting):
+                proven(certificate)
+            self._waiting.clear()
+
+    def _prove(self, terms: Terms, sums: Sums) -> None:
+        if self._waiting is None:
+            proven(certificates(self.lp, [(terms, sums)])[0])
+            return
+        self._waiting.append((terms, sums))
+        if len(self._waiting) >= TOGETHER:
+            self._prove_waiting()
 
     def only_one(self) -> bool:
         """Whether the base optimum is surely the only one: nothing outside the basis is free of cost."""
-        money = float(np.abs(self.lp.cost) @ np.abs(self.base.x)) or 1.0
-        small = 1e-10 * money
+        small = FREE * float(np.abs(self.lp.cost).max(initial=0.0))
         basic = highspy.HighsBasisStatus.kBasic
         for status, dual, low, high in (
             (self.basis.col_status, self.base.reduced, self.lp.low, self.lp.high),
             (self.basis.row_status, self.base.row_dual, self.lp.row_low, self.lp.row_high),
         ):
-            free = [s != basic for s in status]
-            if np.any(np.array(free) & (np.abs(dual) < small) & (low < high)):
+            outside = np.array([s != basic for s in status])
+            if np.any(outside & (np.abs(dual) <= small) & (low < high)):
                 return False
         return True
 
@@ -77,81 +122,51 @@ class Neighbours:
         cost: Floats | None = None,
         rows: Bounds | None = None,
         columns: Bounds | None = None,
-        prove: bool = True,
     ) -> Solution | None:
-        """The optimum with these costs (all columns) and bounds (those named); None when impossible.
+        """The proven optimum with these costs (all columns) and bounds (those named); None when impossible.
 
         Raises `NeighbourError` when the margin has no end or the solver fails, and
         `CertificateError` when the optimum cannot be proven.
         """
-        rows, columns = rows or {}, columns or {}
+        terms = self.terms.with_(cost, rows or {}, columns or {}, len(self.lp.rows))
+        dearer = None if cost is None else (cost != self.lp.cost).nonzero()[0].astype(np.int32)
         try:
-            self._change(cost, rows, columns)
-            outcome = self._restarted()
-            if outcome.status is Status.INFEASIBLE:
+            self._change(terms, dearer, rows or {}, columns or {})
+            found = self._restarted()
+            if found is None:
                 return None
-            if outcome.solution is None:
-                raise NeighbourError(f"a neighbour ended as {outcome.message}")
-            solution = self._in_terms_of(outcome.solution, cost)
-            if prove:
-                self._prove(solution, cost, rows, columns)
-            return solution
+            sums = sums_of(self.lp, terms.cost, found.x, found.row_dual)
+            self._prove(terms, sums)
         finally:
-            self._put_back(cost, rows, columns)
+            self._change(self.terms, dearer, rows or {}, columns or {})
+        objective = float(terms.cost @ sums.x) + self.lp.offset
+        return Solution(sums.x, sums.activity, sums.y, sums.reduced, objective, found.iterations)
 
-    def _restarted(self) -> Outcome:
-        self.solver.highs.setBasis(self.basis)
+    def _restarted(self) -> Found | None:
+        """Solved from the base's basis; any end but an optimum is for the solver's wrapper to judge."""
+        highs, scale = self.solver.highs, self.solver.scale
+        highs.setBasis(self.basis)
         self.solves += 1
-        return self.solver.solve()
+        if highs.run() == highspy.HighsStatus.kOk and highs.getModelStatus() == highspy.HighsModelStatus.kOptimal:
+            found = highs.getSolution()
+            _, iterations = highs.getInfoValue("simplex_iteration_count")
+            return Found(np.array(found.col_value) / scale, np.array(found.row_dual), iterations)
+        outcome = self.solver.solve()
+        if outcome.status is Status.INFEASIBLE:
+            return None
+        if outcome.solution is None:
+            raise NeighbourError(f"a neighbour ended as {outcome.message}")
+        return Found(outcome.solution.x, outcome.solution.row_dual, outcome.solution.iterations)
 
-    def _change(self, cost: Floats | None, rows: Bounds, columns: Bounds) -> None:
-        if cost is not None:
-            self.solver.set_cost(cost)
-        for row, (low, high) in rows.items():
-            self.solver.set_row(row, low, high)
-        for column, (low, high) in columns.items():
-            self.solver.set_column(column, low, high)
-
-    def _put_back(self, cost: Floats | None, rows: Bounds, columns: Bounds) -> None:
-        if cost is not None:
-            self.solver.set_cost(self.lp.cost)
+    def _change(self, terms: Terms, dearer: Integers | None, rows: Bounds, columns: Bounds) -> None:
+        """Send the solver these terms, where they differ from the base's."""
+        highs, scale, first = self.solver.highs, self.solver.scale, len(self.lp.rows)
+        if dearer is not None and len(dearer):
+            highs.changeColsCost(len(dearer), dearer, terms.cost[dearer])
         for row in rows:
-            self.solver.set_row(row, self.lp.row_low[row], self.lp.row_high[row])
+            highs.changeRowBounds(row, terms.low[row] * scale, terms.high[row] * scale)
         for column in columns:
-            self.solver.set_column(column, self.lp.low[column], self.lp.high[column])
-
-    def _in_terms_of(self, solution: Solution, cost: Floats | None) -> Solution:
-        """The solver's wrapper counts the base cost: count the one that was asked for."""
-        if cost is None:
-            return solution
-        return replace(solution, objective=float(cost @ solution.x) + self.lp.offset)
-
-    def _prove(self, solution: Solution, cost: Floats | None, rows: Bounds, columns: Bounds) -> None:
-        changed = self.changed(cost, rows, columns)
-        certificate = certify(changed, solution)
-        if not certificate.holds:
-            raise CertificateError(f"a neighbour of the plan cannot be proven: {certificate}")
-
-    def changed(self, cost: Floats | None, rows: Bounds, columns: Bounds) -> LabelledLp:
-        """The program as a neighbour sees it."""
-        low, high = self.lp.row_low, self.lp.row_high
-        if rows:
-            low, high = low.copy(), high.copy()
-            for row, pair in rows.items():
-                low[row], high[row] = pair
-        column_low, column_high = self.lp.low, self.lp.high
-        if columns:
-            column_low, column_high = column_low.copy(), column_high.copy()
-            for column, pair in columns.items():
-                column_low[column], column_high[column] = pair
-        return replace(
-            self.lp,
-            row_low=low,
-            row_high=high,
-            low=column_low,
-            high=column_high,
-            cost=self.lp.cost if cost is None else cost,
-        )
+            highs.changeColBounds(column, terms.low[first + column] * scale, terms.high[first + column] * scale)
 
 
 class RatioNeighbours:

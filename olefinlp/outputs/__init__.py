@@ -11,7 +11,7 @@ if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
     from olefinlp.inputs.scenario import Scenario
 
-__all__ = ["write_csv", "write_json", "write_lp", "write_workbook"]
+__all__ = ["write_answer", "write_csv", "write_json", "write_lp", "write_workbook"]
 
 
 def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:
@@ -22,6 +22,13 @@ def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answ
     from olefinlp.outputs.workbook import write_workbook as write
 
     return write(plan, path, answers)
+
+
+def write_answer(answer: Answer, path: str | os.PathLike[str]) -> Path:
+    """Write one answer as a workbook with its chart, whole or not at all. Raises `OutputError`."""
+    from olefinlp.outputs.answer_files import write_answer as write
+
+    return write(answer, path)
 
 
 def write_json(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:

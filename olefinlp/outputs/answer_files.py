@@ -35,6 +35,8 @@ def _cell(column: Column, value: Any) -> str:
         return value or ""
     if column.kind == "share":
         return f"{100 * value:.1f} %"
+    if column.kind == "count":
+        return number(value, 0)
     return number(value, 1) if column.kind == "money" else significant(value)
 
 

