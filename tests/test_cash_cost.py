@@ -14,8 +14,9 @@ import pytest
 from plants import ONE_FEED, near, planned
 
 from olefinlp.answers.answer import Answer
-from olefinlp.answers.cash_cost import ALL_MONTHS, COSTS, PRICES, WHOLE, WORTHS, Parts, cash_cost
+from olefinlp.answers.cash_cost import cash_cost
 from olefinlp.answers.plan import Plan
+from olefinlp.answers.plan_parts import ALL_MONTHS, COSTS, PRICES, WHOLE, WORTHS, Parts
 
 CENT_PER_LB = 0.01 / 0.45359237e-3  # USD/t
 LB = 0.45359237e-6  # kt

@@ -65,7 +65,7 @@ def trace(evaluate: Evaluate, low: float, high: float, size: float) -> list[Step
 
 def _between(evaluate: Evaluate, a: Point, b: Point, size: float) -> list[Point]:
     """Points at which the slope changes, between two points, in order."""
-    if _on_line(a, b, size):
+    if _on_line(a, b, size) or a.slope == b.slope:
         return []
     at = _meeting(a, b)
     if not a.at < at < b.at:
