@@ -136,8 +136,8 @@ def curve(
     item: Annotated[
         str,
         typer.Argument(
-            help="A price or limit by its path in the files (feeds.naphtha.spot, recovery_units.x.capacity), "
-            "or two cuts as propylene/ethylene for their ratio."
+            help="A price or limit by its path in the files (feeds.<feed>.<source>, recovery_units.<unit>.capacity …), "
+            "or two cuts joined by a stroke, one/other, for their ratio."
         ),
     ],
     low: Annotated[float | None, typer.Option("--from", help="Start, in the unit in which the item is written.")] = None,

@@ -529,7 +529,7 @@ def test_relative_prices_that_cannot_be_worked_out():
     ]
     assert found(MARRAM, {"feeds.heavy_naphtha.cargo.price": {"times": 2}}) == [
         "feeds.heavy_naphtha.cargo.price\n  a relative price needs `of:`, the item it leans on\n"
-        "hint: for example `of: outlets.ethylene_contract`"
+        "hint: for example `of: outlets.<outlet>`"
     ]
     assert found(MARRAM, {"feeds.heavy_naphtha.cargo.price": {"of": "indexes.naphtha", "tims": 2}}) == [
         "feeds.heavy_naphtha.cargo.price\n  unknown name `tims`; a relative price takes: of, times, plus, freight"

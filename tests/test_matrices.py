@@ -17,7 +17,7 @@ from scipy.optimize import linprog
 from scipy.sparse import csr_matrix, vstack
 
 from olefinlp.answers.plan import Plan
-from olefinlp.lp.certificate import CertificateError, certify, prove
+from olefinlp.lp.certificate import Certificate, CertificateError, certify, prove
 from olefinlp.lp.compile import Floats, LabelledLp
 from olefinlp.lp.solver import Solution, solve
 
@@ -140,6 +140,27 @@ def test_a_feasible_plan_that_is_not_the_best_is_caught(every_plan: Plan) -> Non
     of_best, of_none = (certify(lp, replace(half, row_dual=dual)) for dual in (best.row_dual, np.zeros(len(lp.rows))))
     assert of_best.dual <= of_best.tolerance < min(of_best.complementarity, of_best.gap)
     assert of_none.dual > of_none.tolerance
+
+
+def test_each_residual_alone_breaks_a_certificate() -> None:
+    """The four follow from each other only when all hold, so none may be left out of the verdict; nor may one be no number."""
+    good = (0.0, 1e-6, 0.0, 1e-6)
+    assert Certificate(*good, dual_objective=0.0, worst="").holds
+    for place in range(4):
+        for wrong in (1.1e-6, math.nan):
+            assert not Certificate(*good[:place], wrong, *good[place + 1 :], dual_objective=0.0, worst="").holds
+
+
+def test_an_endless_margin_is_not_proven_by_a_dual_of_the_wrong_sign() -> None:
+    """max x + z, x ≥ 0 as a row, z ≤ 4 as a row. At x = 0, z = 4 with duals 1 and 1 every reduced cost is 0, every dual × slack
+    is 0 and 4 = 1 · 0 + 1 · 4: only the sign of the first dual, on a row without a maximum, shows that x has no end."""
+    rows = {("least_limit",): (0.0, [1.0, 0.0], math.inf), ("most_limit",): (-math.inf, [0.0, 1.0], 4.0)}
+    lp = dense_lp([1.0, 1.0], rows)
+    x, dual = np.array([0.0, 4.0]), np.array([1.0, 1.0])
+    found = certify(lp, Solution(x, lp.activity(x), dual, np.zeros(2), 4.0, 0))
+    assert (found.primal, found.complementarity, found.gap) == (0, 0, 0)
+    assert found.dual > found.tolerance
+    assert not found.holds
 
 
 # ---------------------------------------------------------------------------------- signs

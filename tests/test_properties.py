@@ -116,7 +116,7 @@ def plan_of(drawn: dict[str, Any], times: float = 1.0) -> Plan:
 
 
 @given(drawn_plants())
-@settings(max_examples=40)
+@settings(max_examples=30)
 def test_a_drawn_plant_has_a_proven_plan(drawn: dict[str, Any]) -> None:
     """The certificate and all balances hold (`make_plan` raises if not), and what the limits earn is the margin."""
     plan = plan_of(drawn)
@@ -127,7 +127,7 @@ def test_a_drawn_plant_has_a_proven_plan(drawn: dict[str, Any]) -> None:
 
 
 @given(drawn_plants(), st.floats(0.01, 100))
-@settings(max_examples=30)
+@settings(max_examples=25)
 def test_all_prices_times_k_is_the_margin_times_k(drawn: dict[str, Any], k: float) -> None:
     plan, scaled = plan_of(drawn), plan_of(drawn, k)
     moved = sum(abs(line.amount) for line in plan.lines)

@@ -127,7 +127,7 @@ def to_price(value: Any) -> PriceWritten:
     if unknown:
         raise refuse(f"unknown name `{sorted(unknown)[0]}`; a relative price takes: of, times, plus, freight")
     if not isinstance(value.get("of"), str):
-        raise refuse("a relative price needs `of:`, the item it leans on", "for example `of: outlets.ethylene_contract`")
+        raise refuse("a relative price needs `of:`, the item it leans on", "for example `of: outlets.<outlet>`")
     return PriceWritten(
         None,
         value["of"],

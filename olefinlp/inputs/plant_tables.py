@@ -161,7 +161,7 @@ class TableReader:
                 Place(table.file, 1),
                 "",
                 f"component columns must all carry one unit of wt%, mol% or fraction, found: {', '.join(sorted(units))}",
-                "write for example `ethylene [wt%]`",
+                "write for example `<component> [wt%]`",
             )
             return {}
         return {name: SHARES[column.unit.share] for name, column in columns.items() if column.unit}

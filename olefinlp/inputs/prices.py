@@ -119,7 +119,7 @@ class PriceBook:
             if first is not row:
                 self.findings.error(row.place("item"), name, f"is written twice, first in line {first.line}")
             if name not in self.items and not self._known_elsewhere(name):
-                path = "an item is a path, for example `feeds.ethane.contract`"
+                path = "an item is a path, for example `feeds.<feed>.<source>`"
                 hint = near_name(name, self.items) if name.split(".")[0] in heads else path
                 self.findings.warn(row.place("item"), name, "this price is for nothing in this scenario", hint)
         return rows

@@ -50,8 +50,8 @@ def build_model(case: Case) -> pyo.ConcreteModel:
 
     >>> from olefinlp import read_scenario
     >>> model = build_model(read_scenario("scenarios/thermal_cracker.yaml").case)
-    >>> sorted(c.local_name for c in model.component_objects(pyo.Constraint))[:2]
-    ['component_balance', 'cut_balance']
+    >>> "component_balance" in {c.local_name for c in model.component_objects(pyo.Constraint)}
+    True
     """
     with PauseGC():
         m = pyo.ConcreteModel()

@@ -75,31 +75,12 @@ def terms_of(lp: LabelledLp) -> Terms:
 
 
 @dataclass(frozen=True, slots=True)
-class Sums:
-    """What the values and duals of a solution come to, worked out again."""
+class Solved:
+    """Values and duals that are said to be the optimum of a program with these terms."""
 
+    terms: Terms
     x: Floats
     y: Floats
-    activity: Floats
-    row_sizes: Floats
-    """Σ |a x| of each row."""
-    reduced: Floats
-    """c − Aᵀy of each column."""
-    dual_sizes: Floats
-    """|c| + Σ |a y| of each column."""
-
-
-def sums_of(lp: LabelledLp, cost: Floats, x: Floats, y: Floats) -> Sums:
-    """A x and c − Aᵀy with the sizes of their terms."""
-    work, dual_work = lp.value * x[lp.index], lp.value * y[lp.row_of]
-    return Sums(
-        x=x,
-        y=y,
-        activity=lp.by_row(work),
-        row_sizes=lp.by_row(np.abs(work)),
-        reduced=cost - lp.by_column(dual_work),
-        dual_sizes=np.abs(cost) + lp.by_column(np.abs(dual_work)),
-    )
 
 
 def certify(lp: LabelledLp, solution: Solution) -> Certificate:
@@ -111,19 +92,22 @@ def certify(lp: LabelledLp, solution: Solution) -> Certificate:
     complementarity: |dual × slack| over the money that moves, Σ|c x|;
     gap: margin less Σ dual × limit, over the same.
     """
-    return certificates(lp, [(terms_of(lp), sums_of(lp, lp.cost, solution.x, solution.row_dual))])[0]
+    return certificates(lp, [Solved(terms_of(lp), solution.x, solution.row_dual)])[0]
 
 
-def certificates(lp: LabelledLp, solved: Sequence[tuple[Terms, Sums]]) -> list[Certificate]:
+def certificates(lp: LabelledLp, solved: Sequence[Solved]) -> list[Certificate]:
     """A certificate for each of some programs that share the matrix of `lp`; worked out together, which is quicker.
 
     Arrays have a line for each program, and in it the rows and then the columns of the program.
     """
     rows = len(lp.rows)
-    cost, low, high = (np.array([getattr(terms, name) for terms, _ in solved]) for name in ("cost", "low", "high"))
-    x, row_sizes, dual_sizes = (np.array([getattr(sums, n) for _, sums in solved]) for n in ("x", "row_sizes", "dual_sizes"))
-    value = np.array([np.concatenate((sums.activity, sums.x)) for _, sums in solved])
-    dual = np.array([np.concatenate((sums.y, sums.reduced)) for _, sums in solved])
+    cost, low, high = (np.array([getattr(s.terms, name) for s in solved]) for name in ("cost", "low", "high"))
+    x, y = np.array([s.x for s in solved]), np.array([s.y for s in solved])
+    work, dual_work = lp.value * x[:, lp.index], lp.value * y[:, lp.row_of]
+    value = np.concatenate((lp.by_row(work), x), axis=1)
+    dual = np.concatenate((y, cost - lp.by_column(dual_work)), axis=1)
+    row_sizes = lp.by_row(np.abs(work))
+    dual_sizes = np.abs(cost) + lp.by_column(np.abs(dual_work))
     open_low, open_high = np.isinf(low), np.isinf(high)
     money = _money(cost, x, lp.offset)
 

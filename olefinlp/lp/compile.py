@@ -61,18 +61,19 @@ class LabelledLp:
         return self.starts[self._filled].astype(np.intp)
 
     def by_row(self, terms: Floats) -> Floats:
-        """Terms of the non-zeros summed by row."""
-        if len(self._filled) == len(self.rows):
-            return np.add.reduceat(terms, self._starts)
-        sums = np.zeros(len(self.rows))
-        if len(terms):
-            sums[self._filled] = np.add.reduceat(terms, self._starts)
+        """Terms of the non-zeros (last axis) summed by row."""
+        sums: Floats = np.zeros((*terms.shape[:-1], len(self.rows)))
+        if len(self._filled):
+            sums[..., self._filled] = np.add.reduceat(terms, self._starts, axis=-1)
         return sums
 
     def by_column(self, terms: Floats) -> Floats:
-        """Terms of the non-zeros summed by column."""
-        sums: Floats = np.bincount(self.index, weights=terms, minlength=len(self.columns)).astype(float, copy=False)
-        return sums
+        """Terms of the non-zeros (last axis) summed by column."""
+        width = len(self.columns)
+        lines = terms.reshape(-1, len(self.index))
+        place = np.arange(0, len(lines) * width, width)[:, None] + self.index
+        sums = np.bincount(place.ravel(), weights=lines.ravel(), minlength=len(lines) * width).astype(float, copy=False)
+        return sums.reshape(*terms.shape[:-1], width)
 
     def activity(self, x: Floats) -> Floats:
         """A x, by row."""

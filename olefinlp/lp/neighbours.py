@@ -14,9 +14,9 @@ from dataclasses import dataclass, replace
 import highspy
 import numpy as np
 
-from olefinlp.lp.certificate import Bounds, Sums, Terms, certificates, prove, proven, sums_of, terms_of
+from olefinlp.lp.certificate import Bounds, Solved, Terms, certificates, prove, proven, terms_of
 from olefinlp.lp.compile import Floats, Integers, LabelledLp
-from olefinlp.lp.solver import Solution, Solver, Status
+from olefinlp.lp.solver import Solver, Status
 from olefinlp.lp.steps import Point
 
 MARGIN_ROW = ("margin_kept",)
@@ -47,12 +47,23 @@ def with_margin_row(lp: LabelledLp) -> LabelledLp:
 
 
 @dataclass(frozen=True, slots=True)
-class Found:
-    """Values and duals as the solver gives them."""
+class Optimum:
+    """A proven optimum beside the base: values by column, duals by row, in units of the plan."""
 
+    lp: LabelledLp
+    cost: Floats
     x: Floats
     row_dual: Floats
-    iterations: int
+
+    @property
+    def objective(self) -> float:
+        """The margin at the prices asked for."""
+        return float(self.cost @ self.x) + self.lp.offset
+
+    @property
+    def reduced(self) -> Floats:
+        """Reduced costs, from the duals."""
+        return self.cost - self.lp.gathered(self.row_dual)
 
 
 class Neighbours:
@@ -71,7 +82,7 @@ class Neighbours:
         self.basis = self.solver.highs.getBasis()
         self.terms = terms_of(self.lp)
         self.solves = 1
-        self._waiting: list[tuple[Terms, Sums]] | None = None
+        self._waiting: list[Solved] | None = None
 
     @contextlib.contextmanager
     def proven_together(self) -> Iterator[None]:
@@ -95,11 +106,11 @@ class Neighbours:
                 proven(certificate)
             self._waiting.clear()
 
-    def _prove(self, terms: Terms, sums: Sums) -> None:
+    def _prove(self, solved: Solved) -> None:
         if self._waiting is None:
-            proven(certificates(self.lp, [(terms, sums)])[0])
+            proven(certificates(self.lp, [solved])[0])
             return
-        self._waiting.append((terms, sums))
+        self._waiting.append(solved)
         if len(self._waiting) >= TOGETHER:
             self._prove_waiting()
 
@@ -122,7 +133,7 @@ class Neighbours:
         cost: Floats | None = None,
         rows: Bounds | None = None,
         columns: Bounds | None = None,
-    ) -> Solution | None:
+    ) -> Optimum | None:
         """The proven optimum with these costs (all columns) and bounds (those named); None when impossible.
 
         Raises `NeighbourError` when the margin has no end or the solver fails, and
@@ -135,28 +146,26 @@ class Neighbours:
             found = self._restarted()
             if found is None:
                 return None
-            sums = sums_of(self.lp, terms.cost, found.x, found.row_dual)
-            self._prove(terms, sums)
+            self._prove(Solved(terms, *found))
+            return Optimum(self.lp, terms.cost, *found)
         finally:
             self._change(self.terms, dearer, rows or {}, columns or {})
-        objective = float(terms.cost @ sums.x) + self.lp.offset
-        return Solution(sums.x, sums.activity, sums.y, sums.reduced, objective, found.iterations)
 
-    def _restarted(self) -> Found | None:
-        """Solved from the base's basis; any end but an optimum is for the solver's wrapper to judge."""
+    def _restarted(self) -> tuple[Floats, Floats] | None:
+        """Values and duals from the base's basis; any end but an optimum is for the solver's wrapper to judge."""
         highs, scale = self.solver.highs, self.solver.scale
+        highs.clearSolver()  # what the solver remembers beside the basis would make answers depend on their order
         highs.setBasis(self.basis)
         self.solves += 1
         if highs.run() == highspy.HighsStatus.kOk and highs.getModelStatus() == highspy.HighsModelStatus.kOptimal:
             found = highs.getSolution()
-            _, iterations = highs.getInfoValue("simplex_iteration_count")
-            return Found(np.array(found.col_value) / scale, np.array(found.row_dual), iterations)
+            return np.array(found.col_value) / scale, np.array(found.row_dual)
         outcome = self.solver.solve()
         if outcome.status is Status.INFEASIBLE:
             return None
         if outcome.solution is None:
             raise NeighbourError(f"a neighbour ended as {outcome.message}")
-        return Found(outcome.solution.x, outcome.solution.row_dual, outcome.solution.iterations)
+        return outcome.solution.x, outcome.solution.row_dual
 
     def _change(self, terms: Terms, dearer: Integers | None, rows: Bounds, columns: Bounds) -> None:
         """Send the solver these terms, where they differ from the base's."""

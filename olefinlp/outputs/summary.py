@@ -24,7 +24,7 @@ def summary(plan: Plan, answers: tuple[Answer, ...] = ()) -> str:
 
     >>> from olefinlp import make_plan, read_scenario
     >>> print(summary(make_plan(read_scenario("scenarios/thermal_cracker.yaml"))).splitlines()[0])
-    Textbook thermal cracker, one hour
+    Thermal cracker of the textbook, one hour
     """
     blocks = [_head(plan), _margin(plan), _feeds(plan), _furnaces(plan), _slate(plan), _limits(plan)]
     blocks += [_answer(answer) for answer in answers]
