@@ -1,5 +1,5 @@
 """`python -m olefinlp` is the same as `olefinlp`."""
 
-from olefinlp.cli import app
+from olefinlp.cli import start
 
-app()
+start()

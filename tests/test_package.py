@@ -91,7 +91,7 @@ def test_the_wheel_needs_what_is_written(wheel: Path) -> None:
     assert not plain & {"pytest", "scipy", "ruff", "mypy", "hypothesis"}
     assert "Requires-Python: >=3.11" in metadata
     scripts = archive.read(f"olefinlp-{olefinlp.__version__}.dist-info/entry_points.txt").decode("utf-8")
-    assert "olefinlp = olefinlp.cli:app" in scripts
+    assert "olefinlp = olefinlp.cli:start" in scripts
 
 
 def test_the_installed_package_plans_from_an_empty_folder(installed: Path, tmp_path: Path) -> None:

@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.tables import Column, Record, Table
+from olefinlp.answers.words import tonnage
 from olefinlp.lp.compile import Label
 from olefinlp.lp.neighbours import Neighbours
 from olefinlp.lp.steps import Point, Side, side
@@ -258,18 +259,18 @@ def _sentence(row: Record) -> str:
     name = f"{row['month']}: {row['feed']} {row['source']}"
     unit, today = row["trade_unit"], f"today {row['price_trade']:,.1f}"
     if row["must_take"]:
-        return f"{name}: the planned {row['bought']:,.1f} kt must be taken; the last tonne is worth {_shown(row['exit'])} per t."
+        return f"{name}: the planned {tonnage(row['bought'])} must be taken; the last tonne is worth {_shown(row['exit'])} per t."
     if row["walk_away_trade"] is None:
         if row["bought"]:
-            return f"{name}: the planned {row['bought']:,.1f} kt cannot be done without at any price."
+            return f"{name}: the planned {tonnage(row['bought'])} cannot be done without at any price."
         return f"{name} cannot be taken at any price."
     if not row["bought"]:
         return f"{name} is not bought: its first tonne is worth {row['walk_away_trade']:,.1f} {unit}, {today}."
-    text = f"{name}: buy the planned {row['bought']:,.1f} kt up to {row['walk_away_trade']:,.1f} {unit} ({today})"
+    text = f"{name}: buy the planned {tonnage(row['bought'])} up to {row['walk_away_trade']:,.1f} {unit} ({today})"
     if row["paid_anyway"]:
         text += f", as {row['paid_anyway']:.0%} is paid even if it is not taken"
     if row["step_down"] is not None:
-        text += f"; above that the next step down is to {row['step_down']:,.1f} kt"
+        text += f"; above that the next step down is to {tonnage(row['step_down'])}"
     return text + "."
 
 

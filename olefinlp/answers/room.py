@@ -11,6 +11,8 @@ import numpy as np
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.tables import Column, Record, Table
+from olefinlp.answers.words import money as money_words
+from olefinlp.answers.words import tonnage
 from olefinlp.lp.neighbours import Neighbours
 
 if TYPE_CHECKING:
@@ -80,7 +82,7 @@ def room_to_move(plan: Plan, share: float = SHARE) -> Answer:
         Column("equal_high", "Most at equal margin", kind="quantity"),
         Column("could_differ", "Could differ at equal margin"),
     )
-    note = f"Within {money:,.0f} k{plan.currency} of the best margin. Ranges do not hold together."
+    note = f"Within {money_words(money, plan.currency)} of the best margin. Ranges do not hold together."
     table = Table("room_to_move", "Room to move", columns, rows, note)
     return Answer("room_to_move", "Room to move", (table,), _sentences(plan, rows, share, money), note)
 
@@ -130,9 +132,11 @@ def _sentences(plan: Plan, rows: list[Record], share: float, money: float) -> tu
         first = f"{len(free)} decisions could differ at equal margin: {names}{more}."
     else:
         first = "The plan is the only one with this margin."
-    wide = sorted((row for row in rows if row["unit"] == "kt"), key=lambda row: row["low"] - row["high"])[:3]
-    text = [f"{_name(row)} {row['low']:,.1f} to {row['high']:,.1f} kt" for row in wide]
-    second = f"Within {100 * share:.3g} % of the margin ({money:,.0f} k{plan.currency}): {'; '.join(text)}."
+    mass = [row for row in rows if row["unit"] == "kt" and row["decision"] != "charged"]
+    wide = sorted(mass, key=lambda row: row["low"] - row["high"])[:5]
+    text = [f"{_name(row)} {tonnage(row['low'])} to {tonnage(row['high'])}" for row in wide if row["high"] > row["low"]]
+    within = f"Within {100 * share:.3g} % of the margin ({money_words(money, plan.currency)})"
+    second = f"{within}: {'; '.join(text)}." if text else f"{within} no purchase or sale can move."
     return first, second
 
 

@@ -22,7 +22,7 @@ from olefinlp.lp.steps import Point
 MARGIN_ROW = ("margin_kept",)
 FREE = 1e-9
 """Share of the largest price below which a dual may be what rounding leaves of nothing."""
-TOGETHER = 16
+TOGETHER = 8
 """How many optima are proven at once, where a question allows it."""
 
 

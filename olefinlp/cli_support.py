@@ -1,0 +1,206 @@
+"""What the commands share: reading and planning with an end for every failure, printing, exit codes."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+from typing import TYPE_CHECKING, Any, NoReturn
+
+import typer
+
+if TYPE_CHECKING:
+    from olefinlp.answers.answer import Answer
+    from olefinlp.answers.plan import NoPlan, Plan
+    from olefinlp.inputs.findings import Finding, InputError
+    from olefinlp.inputs.scenario import Scenario
+
+    Writer = Callable[[Plan, Path, tuple[Answer, ...]], object]
+
+EXIT_OUTPUT, EXIT_INPUT, EXIT_FAILED = 1, 2, 6
+NOT_PROVEN = "hint: this is a fault of the tool or of extreme numbers, not a plan; please report it"
+
+
+def write_all(made: Plan, answers: tuple[Answer, ...], targets: list[tuple[Path, Writer]]) -> None:
+    """Write each output; one that cannot be written does not hold back the others."""
+    from olefinlp.outputs.files import OutputError
+
+    written, failed = [], []
+    for target, write in targets:
+        try:
+            write(made, target, answers)
+            written.append(shown_path(target))
+        except OutputError as error:
+            failed.append(str(error))
+    if written:
+        note(f"\nwritten: {', '.join(written)}")
+    if failed:
+        stop("\n".join(failed), EXIT_OUTPUT)
+
+
+def answers_of(made: Plan, parcels: str | None, room: float) -> tuple[Answer, ...]:
+    """The answers that come with a plan; ends the command when an option does not read."""
+    from olefinlp.answers.default import default_answers
+
+    try:
+        sizes = [float(size) for size in parcels.split(",")] if parcels else None
+    except ValueError:
+        stop(f"`{parcels}` is no list of sizes\nhint: kt with commas between, for example 3,6,12", EXIT_INPUT)
+    if not 0 <= room < 100:
+        stop(f"room is a share of the margin from 0 to 100 %, not {room:g}", EXIT_INPUT)
+    return default_answers(made, sizes, room / 100)
+
+
+def explanations(scenario: Scenario, feed: str | None, mode: str | None) -> list[Answer]:
+    """Why there is no plan; if there is one, why it leaves out a feed or mode, or every feed that it does not buy."""
+    from olefinlp.answers.impossible import explain_impossible
+    from olefinlp.answers.why_not import why_not_feed, why_not_mode
+
+    made = plan_if_possible(scenario)
+    if made is None:
+        return [explain_impossible(scenario)]
+    offered = dict.fromkeys(row["feed"] for row in made.feeds.rows)
+    bought = {row["feed"] for row in made.feeds.rows if row["bought"]}
+    feeds = [feed] if feed else [] if mode else [name for name in offered if name not in bought]
+    try:
+        return [*(why_not_feed(made, name) for name in feeds), *([why_not_mode(made, mode)] if mode else [])]
+    except ValueError as error:
+        stop(str(error), EXIT_INPUT)
+    except ArithmeticError as error:
+        stop(str(error), EXIT_FAILED)
+
+
+def plan_if_possible(scenario: Scenario) -> Plan | None:
+    """The plan of a scenario, None when limits clash; ends the command when there is none for another reason."""
+    from olefinlp.answers.balances import BalanceError
+    from olefinlp.answers.plan import NoPlan, make_plan
+    from olefinlp.lp.certificate import CertificateError
+    from olefinlp.lp.solver import EXIT_CODES, Status
+
+    try:
+        return make_plan(scenario)
+    except NoPlan as error:
+        if error.status is Status.INFEASIBLE:
+            return None
+        stop(str(error), EXIT_CODES[error.status])
+    except (CertificateError, BalanceError) as error:
+        stop(f"{error}\n{NOT_PROVEN}", EXIT_FAILED)
+
+
+def scenario_path(path: Path | None) -> Path:
+    """The scenario asked for, else the demo month."""
+    from olefinlp.starter_files import default_scenario
+
+    return path or default_scenario()
+
+
+def read(path: Path, price_case: str | None) -> Scenario:
+    """A scenario; ends the command with everything that is wrong."""
+    from olefinlp.inputs.findings import InputError
+    from olefinlp.inputs.scenario import read_scenario
+
+    try:
+        scenario = read_scenario(path)
+        return scenario.with_(price_case=price_case) if price_case else scenario
+    except InputError as error:
+        stop_on_input(error)
+
+
+def planned(path: Path, price_case: str | None, json_file: str | None) -> Plan:
+    """A plan; ends the command with the reason when there is none."""
+    from olefinlp.answers.balances import BalanceError
+    from olefinlp.answers.plan import NoPlan, make_plan
+    from olefinlp.inputs.findings import InputError
+    from olefinlp.inputs.scenario import read_scenario
+    from olefinlp.lp.certificate import CertificateError
+    from olefinlp.lp.solver import EXIT_CODES
+
+    try:
+        scenario = read_scenario(path)
+        return make_plan(scenario.with_(price_case=price_case) if price_case else scenario)
+    except InputError as error:
+        failure_json(json_file, _input_record(error))
+        stop_on_input(error)
+    except NoPlan as error:
+        failure_json(json_file, _no_plan_record(error))
+        stop(str(error), EXIT_CODES[error.status])
+    except (CertificateError, BalanceError) as error:
+        failure_json(json_file, {"status": "not_proven", "message": str(error)})
+        stop(f"{error}\n{NOT_PROVEN}", EXIT_FAILED)
+
+
+def _input_record(error: InputError) -> dict[str, Any]:
+    findings = [
+        {"level": f.level, "place": str(f.place), "path": f.path, "message": f.message, "hint": f.hint} for f in error.findings
+    ]
+    return {"status": "input_error", "message": str(error), "findings": findings}
+
+
+def _no_plan_record(error: NoPlan) -> dict[str, Any]:
+    record: dict[str, Any] = {"status": error.status.value, "message": str(error)}
+    if error.clash:
+        record["clash"] = [
+            [{"month": c.month, "limit": c.text, "place": str(c.place or ""), "reason": c.reason} for c in limits]
+            for limits in error.clash.sets
+        ]
+    return record
+
+
+def failure_json(target: str | None, record: dict[str, Any]) -> None:
+    """A script that asked for JSON gets JSON, whatever happened."""
+    if target is None:
+        return
+    import json
+
+    from olefinlp.outputs.files import OutputError, write_text
+
+    text = json.dumps(record, indent=1, ensure_ascii=False) + "\n"
+    if target == "-":
+        data(text)
+        return
+    try:
+        write_text(target, text)
+    except OutputError as error:
+        note(str(error))
+
+
+def stop_on_input(error: InputError) -> NoReturn:
+    """End the command with everything that is wrong."""
+    print_findings(error.findings)
+    raise typer.Exit(EXIT_INPUT)
+
+
+def print_findings(findings: tuple[Finding, ...]) -> None:
+    """All findings, and how many."""
+    for finding in findings:
+        note(f"{finding}\n")
+    errors = sum(f.level == "error" for f in findings)
+    if errors:
+        note(", ".join([count(errors, "error"), count(len(findings) - errors, "warning")]))
+
+
+def count(number: int, word: str) -> str:
+    """A number and its noun."""
+    return f"{number} {word}{'' if number == 1 else 's'}"
+
+
+def stop(message: str, code: int) -> NoReturn:
+    """End the command with a message and an exit code."""
+    note(message)
+    raise typer.Exit(code)
+
+
+def data(text: str) -> None:
+    """JSON is UTF-8, whatever the terminal."""
+    typer.echo(text.encode("utf-8"), nl=False)
+
+
+def note(message: str) -> None:
+    """Something for the person, beside the data."""
+    typer.echo(message, err=True)
+
+
+def shown_path(path: Path) -> str:
+    """A path as a person in this folder would type it."""
+    from olefinlp.inputs.findings import shown
+
+    return shown(path)
