@@ -664,12 +664,31 @@ def test_faults_of_several_files_come_at_once(edited):
         f"{line(scenario, 'contract:      {max: 12 kt')}  feeds.propane.contract.maxx",
         f"{line(plant, 'name:')}  main_product",
         f"{line(plant, 'main_product:')}  main_produkt",
-        f"{components}:1",
+        f"{components}:1",  # a column that is not known …
+        f"{components}:1",  # … and one that is missing
         f"{TABLE}:1",
     ]
     assert "  unknown name `main_produkt`; here it takes: " in found[2]
     assert found[2].endswith("hint: did you mean `main_product`?")
-    assert found[4].endswith("the column `unit` is missing\nhint: did you mean `unt`?")
+    assert found[5].endswith("the column `unit` is missing\nhint: did you mean `unt`?")
+
+
+def test_a_misspelt_name_hides_no_other_fault(edited):
+    """A misspelt name, yields that do not add up and a price that is missing are found in one run."""
+    yields = "models/brackwater/yields.csv"
+    found = edited(
+        MARCH,
+        [
+            ("scenarios/brackwater_2031_03.yaml", "contract:      {max: 12 kt", "contract:      {maxx: 12 kt"),
+            (yields, "ethane,low,3.76", "ethane,low,4.96"),
+            (TABLE, "outlets.c5_sale,", "outlets.c6_sale,"),
+        ],
+    )
+    text = "\n".join(found)
+    assert "unknown name `maxx`" in text
+    assert "the yields sum to 101.20 %" in text
+    assert "outlets.c5_sale\n  has no price" in text
+    assert "`max` is missing" not in text
 
 
 def test_a_change_leaves_the_original_untouched():

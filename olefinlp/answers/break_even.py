@@ -69,7 +69,7 @@ class Value:
         first, *others = self.columns
         columns = {first: (volume, volume)} | dict.fromkeys(others, (0.0, 0.0))
         solution = self.neighbours.solve(cost=self.cost, rows=self.rows, columns=columns)
-        return None if solution is None else Point(volume, solution.objective, float(solution.reduced[first]))
+        return None if solution is None else Point(volume, solution.objective, solution.reduced_cost(first))
 
 
 def _found(places: dict[Label, int], label: Label) -> list[int]:

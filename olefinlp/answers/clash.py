@@ -43,7 +43,7 @@ class Clash:
             lines.append(_headline(position, len(limits)))
             lines += [f"  {limit.text:<{width}}  {limit.place or ''}{_because(limit)}".rstrip() for limit in limits]
         word = "one of them" if len(self.sets) == 1 else "one of each set"
-        rest = "more limits may clash beyond these" if len(self.sets) == MOST_SETS else "no other limit need be touched"
+        rest = "more limits may clash beyond these" if len(self.sets) == MOST_SETS else "not every one of them helps alone"
         explain = f"; `olefinlp explain {self.file}` says which, and what it costs" if self.file else ""
         return "\n".join([*lines, f"hint: relax {word}, as little as is needed; {rest}{explain}"])
 

@@ -9,16 +9,16 @@ def amount(value: float) -> str:
     >>> amount(2901.6), amount(233.58), amount(0.9)
     ('2,902', '233.6', '0.9')
     """
-    return f"{value:,.0f}" if abs(value) >= 1000 else f"{value:.4g}"
+    return f"{value:,.0f}" if abs(value) >= 999.95 else f"{value:.4g}"
 
 
 def worth(value: float) -> str:
     """A price to three figures.
 
-    >>> worth(24.5374), worth(2935.77), worth(0.6556), worth(0.0)
-    ('24.5', '2,936', '0.656', '0')
+    >>> worth(24.5374), worth(2935.77), worth(999.7), worth(0.6556), worth(0.0)
+    ('24.5', '2,936', '1,000', '0.656', '0')
     """
-    return f"{value:,.0f}" if abs(value) >= 1000 else f"{value:.3g}"
+    return f"{value:,.0f}" if abs(value) >= 999.5 else f"{value:.3g}"
 
 
 def percent(share: float) -> str:

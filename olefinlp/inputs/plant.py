@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from olefinlp.inputs.findings import Finding, Findings, Place
@@ -199,6 +199,16 @@ def read_plant(path: str | os.PathLike[str]) -> Plant:
 
 def load_plant(path: str | os.PathLike[str], findings: Findings) -> Plant | None:
     """As `read_plant`, with all findings added to the list given and none raised."""
+    before = len(findings.errors)
+    plant = plant_even_if_wrong(path, findings)
+    return plant if len(findings.errors) == before else None
+
+
+def plant_even_if_wrong(path: str | os.PathLike[str], findings: Findings) -> Plant | None:
+    """As `load_plant`, but a plant whose tables could be read is given back although checks found errors.
+
+    With it a scenario can be checked in the same run as its plant; it must not be planned with.
+    """
     from olefinlp.inputs.plant_checks import check_plant
     from olefinlp.inputs.plant_tables import TableReader
 
@@ -208,8 +218,8 @@ def load_plant(path: str | os.PathLike[str], findings: Findings) -> Plant | None
     document = read_yaml(file, findings)
     if document is None:
         return None
-    before = len(findings.errors)
     written = validate(document, PlantFile, findings)
+    before = len(findings.errors)
     tables = TableReader(folder, document, findings)
     plant = None
     if written:
@@ -221,8 +231,4 @@ def load_plant(path: str | os.PathLike[str], findings: Findings) -> Plant | None
     own = Findings()
     check_plant(plant, own)
     findings.items += [item for item in own if item not in findings.items]
-    if own.errors:
-        return None
-    from dataclasses import replace
-
-    return replace(plant, warnings=tuple(f for f in findings.warnings))
+    return replace(plant, warnings=findings.warnings)

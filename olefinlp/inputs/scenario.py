@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import copy
 import functools
 import os
@@ -12,7 +13,7 @@ from typing import TYPE_CHECKING, Any
 
 from olefinlp.inputs.findings import Finding, Findings, near_name
 from olefinlp.inputs.periods import Period, period
-from olefinlp.inputs.plant import Plant, load_plant
+from olefinlp.inputs.plant import Plant, plant_even_if_wrong
 from olefinlp.inputs.scenario_file import ScenarioFile
 from olefinlp.inputs.tables import Table, read_table
 from olefinlp.inputs.units import Basis, UnitError, convert, dims
@@ -154,7 +155,7 @@ def _scenario(path: Path, document: Document, plant: Plant | None, findings: Fin
     file = validate(document, ScenarioFile, findings)
     if plant is None:
         named = document.data.get("plant")
-        plant = load_plant(path.parent / named, findings) if isinstance(named, str) else None
+        plant = plant_even_if_wrong(path.parent / named, findings) if isinstance(named, str) else None
     else:
         findings.items += plant.warnings
     table = _price_table(path, document, file, findings)
@@ -166,6 +167,12 @@ def _scenario(path: Path, document: Document, plant: Plant | None, findings: Fin
     if len(findings.errors) > before:
         return None  # else every price in that money would be a finding of its own
     scenario = Scenario(path, document, file, plant, periods, table, rates)
+    if findings.errors:
+        # There is no plan, but what else is wrong is worth saying; on what is known to be wrong a
+        # later check may stumble, and then the findings so far are what there is to say.
+        with contextlib.suppress(Exception):
+            build_case(scenario, findings)
+        return None
     case = build_case(scenario, findings)
     if case is None or findings.errors:
         return None

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import copy
+import difflib
 import types
 import typing
+from dataclasses import replace
 from typing import Annotated, Any, TypeVar, get_args, get_origin
 
 from pydantic import BaseModel, ValidationError
@@ -12,10 +15,16 @@ from olefinlp.inputs.findings import Findings, near_name, path_text
 from olefinlp.inputs.yaml_files import Document, Path_
 
 M = TypeVar("M", bound=BaseModel)
+MOST_NAMES = 3
+"""How often misspelt names are put right: names inside a misspelt block show only after it."""
 
 
 def validate(document: Document, model: type[M], findings: Findings) -> M | None:
-    """The document as a frozen object; None with a finding for each thing wrong."""
+    """The document as a frozen object; None with a finding for each thing wrong.
+
+    Where all that is wrong are misspelt names, the object is made as if they were spelt right (the
+    findings are there all the same), so that what else is wrong is found in the same run.
+    """
     try:
         return model.model_validate(document.data)
     except ValidationError as error:
@@ -33,7 +42,35 @@ def validate(document: Document, model: type[M], findings: Findings) -> M | None
             text = " or ".join(message for message, _ in messages)
             hint = next((hint for _, hint in messages if hint), "")
             findings.error(document.place(path), path_text(path), text, hint)
-        return None
+        return _as_if_spelt_right(document, model)
+
+
+def _as_if_spelt_right(document: Document, model: type[M]) -> M | None:
+    """The object with each unknown name read as the nearest known one; None when more is wrong."""
+    data = copy.deepcopy(document.data)
+    for _ in range(MOST_NAMES):
+        try:
+            return model.model_validate(data)
+        except ValidationError as error:
+            unknown = [i["loc"] for i in error.errors(include_url=False) if i["type"] == "extra_forbidden"]
+        changed = [_rename(data, _written_path(replace(document, data=data), loc), model) for loc in unknown]
+        if not any(changed):
+            return None
+    return None
+
+
+def _rename(data: Any, path: Path_, model: type[BaseModel]) -> bool:
+    """Give an unknown name the nearest known one that is free; whether there was one."""
+    if not path:
+        return False
+    here = data
+    for part in path[:-1]:
+        here = here[part]
+    known = [name for name in _field_names(_model_at(model, path[:-1])) if name not in here]
+    near = difflib.get_close_matches(str(path[-1]), known, n=1, cutoff=0.6)
+    if near:
+        here[near[0]] = here.pop(path[-1])
+    return bool(near)
 
 
 def _written_path(document: Document, loc: tuple[str | int, ...]) -> Path_:

@@ -103,11 +103,11 @@ def certificates(lp: LabelledLp, solved: Sequence[Solved]) -> list[Certificate]:
     rows = len(lp.rows)
     cost, low, high = (np.array([getattr(s.terms, name) for s in solved]) for name in ("cost", "low", "high"))
     x, y = np.array([s.x for s in solved]), np.array([s.y for s in solved])
-    work, dual_work = lp.value * x[:, lp.index], lp.value * y[:, lp.row_of]
-    value = np.concatenate((lp.by_row(work), x), axis=1)
-    dual = np.concatenate((y, cost - lp.by_column(dual_work)), axis=1)
-    row_sizes = lp.by_row(np.abs(work))
-    dual_sizes = np.abs(cost) + lp.by_column(np.abs(dual_work))
+    activity, row_sizes = lp.by_row.sums_and_sizes(x)
+    gathered, dual_sizes = lp.by_column.sums_and_sizes(y)
+    value = np.concatenate((activity, x), axis=1)
+    dual = np.concatenate((y, cost - gathered), axis=1)
+    dual_sizes += np.abs(cost)
     open_low, open_high = np.isinf(low), np.isinf(high)
     money = _money(cost, x, lp.offset)
 

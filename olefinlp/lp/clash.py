@@ -120,8 +120,9 @@ class ClashFinder:
 def clashing_sets(lp: LabelledLp) -> list[list[Side]] | None:
     """Irreducible sets of clashing sides of limit rows, none sharing a side with another.
 
-    Leaving out one side of every set makes a plan possible, unless there are more than
-    `MOST_SETS`. The list is empty when balances alone clash; None when nothing clashes at all,
+    Leaving out all sides of all sets makes a plan possible, unless there are more than `MOST_SETS`.
+    Leaving out one side of each may not: what is left of a set may clash with limits that stand in
+    none, so not every member helps alone. The list is empty when balances alone clash; None when nothing clashes at all,
     which means that a verdict of no plan was wrong.
     """
     finder = ClashFinder(lp)

@@ -23,6 +23,55 @@ Integers = NDArray[np.int32]
 Label = tuple[str, ...]
 
 
+@dataclass(frozen=True, slots=True)
+class Lines:
+    """A matrix by its lines (rows, or columns): the non-zeros of one after another, and where each line starts.
+
+    Vectors may be several at once: sums run along their last axis.
+    """
+
+    count: int
+    filled: NDArray[np.intp]
+    """Lines that have a non-zero."""
+    starts: NDArray[np.intp]
+    """Where those lines start."""
+    across: NDArray[np.intp]
+    """Where each non-zero stands in its line."""
+    value: Floats
+
+    def sums(self, x: Floats) -> Floats:
+        """Σ a x of each line."""
+        return self._summed(x.take(self.across, axis=-1) * self.value)
+
+    def sums_and_sizes(self, x: Floats) -> tuple[Floats, Floats]:
+        """Σ a x and Σ |a x| of each line."""
+        terms = x.take(self.across, axis=-1) * self.value
+        return self._summed(terms), self._summed(np.abs(terms))
+
+    def line(self, at: int) -> tuple[NDArray[np.intp], Floats]:
+        """Where the non-zeros of one line stand, and what they are."""
+        place = int(np.searchsorted(self.filled, at))
+        if place == len(self.filled) or self.filled[place] != at:
+            return self.across[:0], self.value[:0]
+        end = self.starts[place + 1] if place + 1 < len(self.starts) else len(self.value)
+        return self.across[self.starts[place] : end], self.value[self.starts[place] : end]
+
+    def _summed(self, terms: Floats) -> Floats:
+        if len(self.filled) == self.count:
+            return np.add.reduceat(terms, self.starts, axis=-1)
+        sums: Floats = np.zeros((*terms.shape[:-1], self.count))
+        if len(self.filled):
+            sums[..., self.filled] = np.add.reduceat(terms, self.starts, axis=-1)
+        return sums
+
+
+def _lines(count: int, along: NDArray[np.intp], across: NDArray[np.intp], value: Floats) -> Lines:
+    """Lines from non-zeros in the order of their lines, `along` being the line of each."""
+    sizes = np.bincount(along, minlength=count)
+    filled = np.flatnonzero(sizes)
+    return Lines(count, filled, (np.cumsum(sizes) - sizes)[filled], across, value)
+
+
 @dataclass(frozen=True)
 class LabelledLp:
     """max cost·x + offset, row_low ≤ A x ≤ row_high, low ≤ x ≤ high.
@@ -46,46 +95,29 @@ class LabelledLp:
     column_at: dict[Label, int] = field(repr=False)
 
     @functools.cached_property
-    def row_of(self) -> NDArray[np.intp]:
-        """The row of each non-zero."""
-        return np.repeat(np.arange(len(self.rows)), np.diff(self.starts))
+    def by_row(self) -> Lines:
+        """The matrix by rows."""
+        rows = np.repeat(np.arange(len(self.rows)), np.diff(self.starts))
+        return _lines(len(self.rows), rows, self.index.astype(np.intp), self.value.copy())
 
     @functools.cached_property
-    def _filled(self) -> NDArray[np.intp]:
-        """Rows that have a non-zero."""
-        return np.flatnonzero(np.diff(self.starts))
-
-    @functools.cached_property
-    def _starts(self) -> NDArray[np.intp]:
-        """Where the rows that have a non-zero start."""
-        return self.starts[self._filled].astype(np.intp)
-
-    def by_row(self, terms: Floats) -> Floats:
-        """Terms of the non-zeros (last axis) summed by row."""
-        sums: Floats = np.zeros((*terms.shape[:-1], len(self.rows)))
-        if len(self._filled):
-            sums[..., self._filled] = np.add.reduceat(terms, self._starts, axis=-1)
-        return sums
-
-    def by_column(self, terms: Floats) -> Floats:
-        """Terms of the non-zeros (last axis) summed by column."""
-        width = len(self.columns)
-        lines = terms.reshape(-1, len(self.index))
-        place = np.arange(0, len(lines) * width, width)[:, None] + self.index
-        sums = np.bincount(place.ravel(), weights=lines.ravel(), minlength=len(lines) * width).astype(float, copy=False)
-        return sums.reshape(*terms.shape[:-1], width)
+    def by_column(self) -> Lines:
+        """The matrix by columns."""
+        rows = np.repeat(np.arange(len(self.rows)), np.diff(self.starts))
+        order = np.argsort(self.index, kind="stable")
+        return _lines(len(self.columns), self.index[order].astype(np.intp), rows[order], self.value[order])
 
     def activity(self, x: Floats) -> Floats:
         """A x, by row."""
-        return self.by_row(self.value * x[self.index])
+        return self.by_row.sums(x)
 
     def gathered(self, y: Floats) -> Floats:
         """Aᵀ y, by column."""
-        return self.by_column(self.value * y[self.row_of])
+        return self.by_column.sums(y)
 
     def sizes(self, x: Floats) -> Floats:
         """Σ |a x| of each row: the size that its residual is compared with."""
-        return self.by_row(np.abs(self.value * x[self.index]))
+        return self.by_row.sums_and_sizes(x)[1]
 
 
 def compile_model(model: pyo.ConcreteModel) -> LabelledLp:

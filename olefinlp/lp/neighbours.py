@@ -60,10 +60,10 @@ class Optimum:
         """The margin at the prices asked for."""
         return float(self.cost @ self.x) + self.lp.offset
 
-    @property
-    def reduced(self) -> Floats:
-        """Reduced costs, from the duals."""
-        return self.cost - self.lp.gathered(self.row_dual)
+    def reduced_cost(self, column: int) -> float:
+        """Change of the margin per unit forced into a column, from the duals."""
+        rows, values = self.lp.by_column.line(column)
+        return float(self.cost[column] - values @ self.row_dual[rows])
 
 
 class Neighbours:
