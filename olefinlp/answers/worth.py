@@ -19,12 +19,17 @@ REACH = 0.10
 """How far to look on each side, as a share of the limit."""
 
 
+NOTHING = 1e-9
+"""A worth below this is what rounding leaves of none."""
+
+
 def worth_of_limits(plan: Plan, reach: float = REACH) -> Answer:
     """The worth of every limit that is active, in an operator's unit.
 
-    Each side is found by solving again beside the plan, so that no value hangs on the basis that
-    the solver happened to end with. A limit is listed only if it is reached and worth something,
-    and is no ratio or specification of something that is not made.
+    Each side is found by solving again beside the plan, so that neither a value nor a place in the
+    list hangs on the basis that the solver happened to end with. A limit is listed only if it is
+    reached, moving it one way or the other changes the margin, and it is no ratio or specification
+    of something that is not made.
 
     Columns: worth_loosened and worth_tightened (currency per unit), the limit's values between
     which each holds, the worth of the next step beyond them.
@@ -35,8 +40,9 @@ def worth_of_limits(plan: Plan, reach: float = REACH) -> Answer:
     with plan.neighbours.proven_together():
         for limit in q.case.limits.values():
             record = limit_record(q, limit)
-            if record["state"] in ("at maximum", "at minimum", "fixed") and record["worth"] > 0:
+            if record["state"] in ("at maximum", "at minimum", "fixed"):
                 rows.append(_worth(plan, limit, record, reach, size))
+    rows = [row for row in rows if row["worth_loosened"] or row["worth_tightened"]]
     columns = (
         Column("month", "Month"),
         Column("limit", "Limit"),
@@ -80,7 +86,7 @@ def _worth(plan: Plan, limit: Limit, record: Record, reach: float, size: float) 
     q, neighbours = plan.quantities, plan.neighbours
     label = (f"{limit.family}_limit", *limit.key)
     dual = q.dual(*label)
-    low_side = dual < 0
+    low_side = dual < 0 or (not dual and record["state"] == "at minimum")
     at = (limit.low if low_side else limit.high) or 0.0
     base = Point(at, neighbours.base.objective, dual)
     evaluate = limit_curve(neighbours, limit, low_side)
@@ -89,8 +95,10 @@ def _worth(plan: Plan, limit: Limit, record: Record, reach: float, size: float) 
     loosened, tightened = (down, up) if low_side else (up, down)
     return {
         "month": limit.month,
+        "family": limit.family,
         "limit": limit.label,
         "state": record["state"],
+        "low_side": low_side,
         "value": at * limit.scale,
         "unit": limit.unit,
         "worth_loosened": _scaled(loosened.slope, limit),
@@ -115,7 +123,10 @@ def _typical(plan: Plan, limit: Limit) -> float:
 
 
 def _scaled(slope: float | None, limit: Limit) -> float | None:
-    return None if slope is None else abs(slope) * limit.worth_scale
+    if slope is None:
+        return None
+    worth = abs(slope) * limit.worth_scale
+    return worth if worth >= NOTHING else 0.0
 
 
 def _until(found: Side, limit: Limit) -> float | None:
@@ -123,18 +134,21 @@ def _until(found: Side, limit: Limit) -> float | None:
 
 
 def _sentence(row: Record) -> str:
-    side_words = {"at minimum": "less", "at maximum": "more", "fixed": "loosening"}[row["state"]]
-    month = f"{row['month']}: "
+    start = f"{row['month']}: {row['limit']}"
+    if row["family"] in ("ratio", "specification"):  # multiplied out, so their limit is no number that anyone wrote
+        start += f": missing it by one {row['worth_unit'].partition('/')[2]}"
+    else:
+        start += f" ({amount(row['value'])} {row['unit']}): one unit {'less' if row['low_side'] else 'more'}"
     if row["worth_loosened"] is None:
-        return f"{month}{row['limit']}: loosening it changes nothing that can be planned."
-    text = f"{month}{row['limit']} ({amount(row['value'])} {row['unit']}): one unit {side_words} is worth "
-    text += f"{worth(row['worth_loosened'])} {row['worth_unit']}"
-    end = row["holds_to"] if row["state"] != "at minimum" else row["holds_from"]
+        return f"{start} changes nothing that can be planned."
+    text = f"{start} is worth {worth(row['worth_loosened'])} {row['worth_unit']}"
+    end = row["holds_from"] if row["low_side"] else row["holds_to"]
     if end is not None and row["value"]:
         least = "" if row["next_loosened"] is not None else "at least "
         text += f", for {least}the next {percent(abs(end - row['value']) / abs(row['value']))}"
     if row["next_loosened"] is not None:
         text += f", then {worth(row['next_loosened'])}"
-    if row["worth_tightened"] is not None and abs(row["worth_tightened"] - row["worth_loosened"]) > 1e-6 * row["worth_tightened"]:
-        text += f"; one unit tighter costs {worth(row['worth_tightened'])}"
+    tightened = row["worth_tightened"]
+    if tightened is not None and abs(tightened - row["worth_loosened"]) > 1e-6 * tightened:
+        text += f"; one unit tighter costs {worth(tightened)}"
     return text + "."
