@@ -242,10 +242,3 @@ def test_every_plant_and_scenario_is_described_beside_the_files() -> None:
     """User reference stands with the files."""
     for folder in ("models", "scenarios"):
         assert (ROOT / folder / "README.md").stat().st_size > 1000
-
-
-def test_continuous_integration_runs_the_readme_test_command():
-    readme = (ROOT / "README.md").read_text(encoding="utf-8")
-    command = next(line for line in readme.splitlines() if line.startswith("python3 -m venv") and line.endswith("pytest"))
-    script = (ROOT / ".ci" / "run").read_text(encoding="utf-8")
-    assert any(line.split(" | ")[0] == command for line in script.splitlines())
