@@ -18,7 +18,7 @@ import typer
 from olefinlp.cli_support import (
     EXIT_INPUT,
     EXIT_OUTPUT,
-    answers_of,
+    answer_options,
     count,
     data,
     explanations,
@@ -33,6 +33,7 @@ from olefinlp.cli_support import (
 )
 
 if TYPE_CHECKING:
+    from olefinlp.answers.answer import Answer
     from olefinlp.cli_support import Writer
 
 
@@ -102,8 +103,13 @@ def plan(
     path = scenario_path(scenario)
     if scenario is None:
         note(f"no scenario given: planning the invented demo, {shown_path(path)}")
+    sizes, share = answer_options(parcels, room, json_file)
     made = planned(path, price_case, json_file)
-    answers = () if quick else answers_of(made, parcels, room)
+    answers: tuple[Answer, ...] = ()
+    if not quick:
+        from olefinlp.answers.default import default_answers
+
+        answers = default_answers(made, sizes, share)
     if json_file == "-":
         data(plan_json(made, answers))
     else:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, NoReturn
@@ -37,17 +38,23 @@ def write_all(made: Plan, answers: tuple[Answer, ...], targets: list[tuple[Path,
         stop("\n".join(failed), EXIT_OUTPUT)
 
 
-def answers_of(made: Plan, parcels: str | None, room: float) -> tuple[Answer, ...]:
-    """The answers that come with a plan; ends the command when an option does not read."""
-    from olefinlp.answers.default import default_answers
-
+def answer_options(parcels: str | None, room: float, json_file: str | None) -> tuple[list[float] | None, float]:
+    """Sizes of parcels (kt) and share of the margin for the answers; ends the command when one does not read."""
     try:
         sizes = [float(size) for size in parcels.split(",")] if parcels else None
+        if sizes and not all(0 < size < math.inf for size in sizes):
+            raise ValueError
     except ValueError:
-        stop(f"`{parcels}` is no list of sizes\nhint: kt with commas between, for example 3,6,12", EXIT_INPUT)
+        refuse_option(json_file, f"`{parcels}` is no list of sizes\nhint: kt with commas between, for example 3,6,12")
     if not 0 <= room < 100:
-        stop(f"room is a share of the margin from 0 to 100 %, not {room:g}", EXIT_INPUT)
-    return default_answers(made, sizes, room / 100)
+        refuse_option(json_file, f"room is a share of the margin from 0 to 100 %, not {room:g}")
+    return sizes, room / 100
+
+
+def refuse_option(json_file: str | None, message: str) -> NoReturn:
+    """End the command because of an option, before anything is planned."""
+    failure_json(json_file, {"status": "input_error", "message": message, "findings": []})
+    stop(message, EXIT_INPUT)
 
 
 def explanations(scenario: Scenario, feed: str | None, mode: str | None) -> list[Answer]:

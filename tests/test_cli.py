@@ -189,6 +189,35 @@ def test_the_demo_plan_of_a_process_of_its_own(work: Path) -> None:
     assert done.err == "\nwritten: march.xlsx\n"
 
 
+def test_quick_leaves_the_further_answers_out(work: Path) -> None:
+    """The plan's own tables are the same; the answers around it are in the longer form only."""
+    long, short = (run("plan", TEXTBOOK, "--json", "-", *more).record() for more in ([], ["--quick"]))
+    assert short["margin"] == long["margin"]
+    assert short["feeds"] == long["feeds"]
+    assert set(short) < set(long)
+    assert len(run("plan", TEXTBOOK, "--quick").out) < len(run("plan", TEXTBOOK).out)
+
+
+def test_options_of_the_answers(work: Path) -> None:
+    """Sizes of parcels and the room to move are taken up."""
+    done = run("plan", DEMO, "--parcels", "2,4", "--room", "1")
+    assert done.code == 0
+    assert " 1 % " in done.out
+
+
+@pytest.mark.parametrize(
+    "option", [("--parcels", "x"), ("--parcels", "nan"), ("--parcels=-3",), ("--room", "100"), ("--room=-1",)]
+)
+def test_options_of_the_answers_that_do_not_read(work: Path, option: tuple[str, ...]) -> None:
+    """Said before anything is planned, and as JSON to who asked for it."""
+    done = run("plan", TEXTBOOK, *option, "--json", "-")
+    assert done.code == 2
+    record = done.record()
+    assert record["status"] == "input_error"
+    assert record["message"] + "\n" == done.err
+    assert not list(work.glob("*.xlsx"))
+
+
 # ---------------------------------------------------------------------------------- what goes wrong in a plan
 
 
@@ -556,6 +585,111 @@ def test_export_prints_nothing_on_standard_output(work: Path) -> None:
     assert "maximise" in done.err
 
 
+# ---------------------------------------------------------------------------------- curve and explain
+
+CAPACITY = "recovery_units.ethylene.capacity"
+
+
+def test_a_curve_is_printed_and_written(work: Path) -> None:
+    """Table on standard output, workbook and csv beside it."""
+    done = run("curve", TEXTBOOK, CAPACITY, "--from", "30000", "--to", "60000", "-o", "curve.xlsx", "--csv", "curve.csv")
+    assert done.code == 0
+    assert CAPACITY in done.out
+    assert "written: curve.xlsx, curve.csv" in done.err
+    assert openpyxl.load_workbook(work / "curve.xlsx", read_only=True).sheetnames
+    assert len((work / "curve.csv").read_text(encoding="utf-8").splitlines()) > 1
+
+
+def test_a_ratio_curve(work: Path) -> None:
+    """Two cuts joined by a stroke."""
+    done = run("curve", DEMO, "propylene/ethylene", "--from", "0.26", "--to", "0.30")
+    assert done.code == 0
+    assert "propylene" in done.out and "ethylene" in done.out
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (["recovery_units.ethylene.capacty"], "did you mean `recovery_units.ethylene.capacity`?"),
+        ([CAPACITY, "--from", "5", "--to", "1"], "is empty"),
+        ([CAPACITY, "--month", "2031-07"], "2031-07"),
+        (["propylene/ethylen"], "ethylen"),
+        (["propylene/ethylene", "--month", "hour"], "leave --month out"),
+        ([""], "is no price or limit of this plan"),
+    ],
+)
+def test_curves_that_cannot_be(work: Path, arguments: list[str], words: str) -> None:
+    """Wrong names, empty ranges: exit code 2 and a sentence."""
+    done = run("curve", TEXTBOOK, *arguments)
+    assert done.code == 2
+    assert words in done.err
+    assert done.out == ""
+
+
+@pytest.mark.xfail(strict=True, raises=RuntimeError, reason="a ratio of a cut to itself reaches the solver")
+def test_a_ratio_of_a_cut_to_itself(work: Path) -> None:
+    """There is nothing to follow."""
+    assert run("curve", TEXTBOOK, "ethylene/ethylene").code == 2
+
+
+@pytest.mark.xfail(strict=True, reason="the solver's verdict on one neighbour is unknown, and ends the command with a traceback")
+def test_a_ratio_curve_of_the_other_plant(work: Path) -> None:
+    """A neighbour that cannot be solved ends in a message, not in a traceback."""
+    assert run("curve", "scenarios/marram_point_2031_03.yaml", "propylene/ethylene").code in (0, 6)
+
+
+def test_curves_of_what_cannot_be_planned(work: Path, impossible: Path) -> None:
+    """The exit code is the plan's."""
+    assert run("curve", TEXTBOOK, CAPACITY).code == 3
+    assert run("curve", "scenarios/gone.yaml", CAPACITY).code == 2
+
+
+@pytest.mark.parametrize("option", [("-o", "curve.xlsx"), ("--csv", "curve.csv")])
+def test_curves_that_cannot_be_written(work: Path, option: tuple[str, str]) -> None:
+    """The table was printed; the file is not there: exit code 1."""
+    done = run("curve", TEXTBOOK, CAPACITY, option[0], f"nowhere/{option[1]}")
+    assert done.code == 1
+    assert CAPACITY in done.out
+    assert "the folder nowhere is not there" in done.err
+
+
+def test_explain_an_impossible_month(work: Path, impossible: Path) -> None:
+    """What to relax, with places; the explanation is there, so the command ends well."""
+    done = run("explain", TEXTBOOK, "-o", "why.xlsx")
+    assert done.code == 0
+    assert "ethylene_sale" in done.out.replace(" ", "_")
+    assert f"thermal_cracker.yaml:{line_of(impossible, 'min: 60000 lb')}" in done.out
+    assert openpyxl.load_workbook(work / "why.xlsx", read_only=True).sheetnames
+
+
+def test_explain_feeds_that_are_not_bought(work: Path) -> None:
+    """All of them, or the one that is asked for."""
+    every = run("explain", TEXTBOOK)
+    assert every.code == 0
+    for feed in ("propane", "gas_oil", "natural_gasoline"):
+        assert f"Why not {feed}" in every.out
+    one = run("explain", TEXTBOOK, "--feed", "gas_oil", "-o", "why.xlsx")
+    assert one.code == 0
+    assert one.out.count("Why not") == 1
+    assert (work / "why.xlsx").exists()
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (["--feed", "gas_oill"], "did you mean `gas_oil`?"),
+        (["--mode", "cracker.gas_oil.hard"], "cracker.gas_oil.hard"),
+        (["-o", "why.xlsx"], "do not fit one workbook"),
+    ],
+)
+def test_explanations_that_cannot_be(work: Path, arguments: list[str], words: str) -> None:
+    """Wrong names: exit code 2 and a sentence."""
+    done = run("explain", TEXTBOOK, *arguments)
+    assert done.code == 2
+    assert words in done.err
+    assert done.out == ""
+
+
 # ---------------------------------------------------------------------------------- new, schema, version, help
 
 
@@ -665,7 +799,7 @@ def test_version() -> None:
     assert done.out == f"olefinlp {olefinlp.__version__}\n"
 
 
-@pytest.mark.parametrize("command", ["plan", "check", "export", "new", "schema"])
+@pytest.mark.parametrize("command", ["plan", "check", "export", "curve", "explain", "new", "schema"])
 def test_help_of_every_command(command: str) -> None:
     """A sentence and its arguments."""
     done = run(command, "--help")
@@ -677,7 +811,7 @@ def test_help_lists_commands_and_exit_codes() -> None:
     """What there is, and what an exit code means."""
     done = run("--help")
     assert done.code == 0
-    for word in ("plan", "check", "export", "new", "schema", "Exit codes", "3 no plan possible"):
+    for word in ("plan", "check", "export", "curve", "explain", "new", "schema", "Exit codes", "3 no plan possible"):
         assert word in done.out
 
 

@@ -7,6 +7,7 @@ that falls to its price.
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -14,7 +15,7 @@ from typing import TYPE_CHECKING
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.tables import Column, Record, Table
-from olefinlp.answers.words import tonnage
+from olefinlp.answers.words import percent, tonnage
 from olefinlp.lp.compile import Label
 from olefinlp.lp.neighbours import Neighbours
 from olefinlp.lp.steps import Point, Side, side
@@ -31,8 +32,9 @@ REACH = 0.25
 class Offer:
     """One source in one month: what is bought and what is offered, kt (inf: unlimited).
 
-    `must` is its minimum, `paid_anyway` the share of the price that is paid for a tonne below the
-    take-or-pay quantity `committed`, taken or not.
+    `must` is its minimum, `paid_anyway` the share of the (first) price that is paid for a tonne
+    below the take-or-pay quantity `committed`, taken or not. The last tonne bought is in the price
+    step `step` from `start` to `end` kt, at the price `marginal`.
     """
 
     source: str
@@ -44,11 +46,43 @@ class Offer:
     paid_anyway: float
     price: Price
     marginal: Price
+    step: int
+    start: float
+    end: float
 
-    def avoidable(self, below: bool) -> float:
-        """Share of the price that not taking the tonne below (or above) today's volume saves."""
+    @property
+    def held(self) -> bool:
+        """Whether nothing less may be bought, whatever it costs."""
+        return 0 < self.bought <= self.must
+
+    def turns_at(self, worth: float | None, below: bool) -> float | None:
+        """The price of the marginal step at which a tonne of this worth is neither wanted nor refused.
+
+        Inside the take-or-pay quantity not taking a tonne saves only the rest of its price. None where
+        no such price changes the volume: a minimum, all paid anyway, no such tonne in this step.
+        """
+        if worth is None or (self.held if below else self.bought >= self.end):
+            return None
         inside = self.bought <= self.committed if below else self.bought < self.committed
-        return 1 - self.paid_anyway if inside and self.committed else 1.0
+        if not inside or not self.committed:
+            return worth
+        if self.step > 1:
+            return worth + self.paid_anyway * self.price.value
+        return worth / (1 - self.paid_anyway) if self.paid_anyway < 1 else None
+
+    def next_volume(self, found: Side, below: bool) -> float | None:
+        """Where the volume goes just past the price at which it turns; None when that is not known.
+
+        The worth changes there, or what a tonne costs: end of the step, take-or-pay, minimum.
+        """
+        if found.until is None:
+            return None
+        near = 1e-9 * self.bought
+        if below:
+            ends = [v for v in (self.start, self.committed, self.must) if v < self.bought - near and v >= found.until - near]
+            return max([*ends, *([found.until] if found.next_slope is not None else [])], default=None)
+        ends = [v for v in (self.end, self.committed, self.offered) if v > self.bought + near and v <= found.until + near]
+        return min([*ends, *([found.until] if found.next_slope is not None else [])], default=None)
 
 
 class Value:
@@ -85,26 +119,31 @@ def offers(plan: Plan) -> list[Offer]:
 def _offer(plan: Plan, source: str, month: str) -> Offer:
     q, case = plan.quantities, plan.quantities.case
     limit, pay = case.limits.get(("purchase", source, month)), case.limits.get(("take_or_pay", source, month))
-    bought = q.bought(source, month)
     tiers = case.sources[source].tiers
-    prices = [case.prices[case.purchase_item(source, k), month] for k in tiers]
-    reached, marginal = 0.0, prices[-1]
-    for k, price in zip(tiers, prices, strict=True):
-        reached += case.tier_size[source, k, month]
-        if bought <= reached * (1 + 1e-9):
-            marginal = price
-            break
+    ends = list(itertools.accumulate(case.tier_size[source, k, month] for k in tiers))
+    offered = limit.high if limit and limit.high is not None else math.inf
+    must, committed = limit.low if limit and limit.low else 0.0, pay.low if pay and pay.low else 0.0
+    bought = _on(q.bought(source, month), (*ends, offered, must, committed))
+    step = next((k for k, end in zip(tiers, ends, strict=True) if bought <= end), tiers[-1])
     return Offer(
         source=source,
         month=month,
         bought=bought,
-        offered=limit.high if limit and limit.high is not None else math.inf,
-        must=limit.low if limit and limit.low else 0.0,
-        committed=pay.low if pay and pay.low else 0.0,
+        offered=offered,
+        must=must,
+        committed=committed,
         paid_anyway=case.shortfall_pays.get((source, month), 0.0),
-        price=prices[0],
-        marginal=marginal,
+        price=case.prices[case.purchase_item(source, tiers[0]), month],
+        marginal=case.prices[case.purchase_item(source, step), month],
+        step=step,
+        start=ends[step - 2] if step > 1 else 0.0,
+        end=min(ends[step - 1], offered),
     )
+
+
+def _on(value: float, places: Sequence[float]) -> float:
+    """A value without the rounding that keeps it off one of some places."""
+    return next((place for place in places if abs(value - place) <= 1e-9 * place < math.inf), value)
 
 
 def break_even_prices(plan: Plan, parcels: Sequence[float] | None = None) -> Answer:
@@ -176,9 +215,8 @@ def _break_even(offer: Offer, value: Value, size: float) -> Record:
     down, up, entry = _slopes(offer, value, size)
     factor, unit = _trade(offer.marginal)
     feed, _, name = offer.source.partition(".")
-    held = offer.bought > 0 and offer.bought <= offer.must * (1 + 1e-9)
-    stays_to = None if down.slope is None or held else down.slope / offer.avoidable(below=True)
-    stays_from = None if up.slope is None else up.slope / offer.avoidable(below=False)
+    stays_to = offer.turns_at(down.slope, below=True) if offer.bought else None
+    stays_from = offer.turns_at(up.slope, below=False)
     walk_away = stays_to if offer.bought else stays_from
     return {
         "month": offer.month,
@@ -192,15 +230,16 @@ def _break_even(offer: Offer, value: Value, size: float) -> Record:
         "next": up.slope,
         "walk_away": walk_away,
         "headroom": None if walk_away is None else walk_away - offer.marginal.value,
-        "step_down": down.until if down.next_slope is not None else None,
-        "step_up": up.until if up.next_slope is not None else None,
+        "step_down": None if stays_to is None else offer.next_volume(down, below=True),
+        "step_up": None if stays_from is None else offer.next_volume(up, below=False),
         "trade_unit": unit,
         "price_trade": offer.marginal.value / factor,
         "walk_away_trade": None if walk_away is None else walk_away / factor,
         "stays_from": None if stays_from is None or not offer.bought else stays_from / factor,
         "stays_to": None if stays_to is None else stays_to / factor,
-        "paid_anyway": offer.paid_anyway if offer.avoidable(below=True) < 1 else None,
-        "must_take": held,
+        "paid_anyway": offer.paid_anyway if offer.committed and offer.bought <= offer.committed else None,
+        "must_take": offer.held,
+        "exit_trade": None if down.slope is None else down.slope / factor,
     }
 
 
@@ -213,7 +252,7 @@ def _slopes(offer: Offer, value: Value, size: float) -> tuple[Side, Side, float 
     whole = offer.offered if math.isfinite(offer.offered) else max(2 * offer.bought, 1.0)
     reach = REACH * whole
     down = side(value, base, -min(offer.bought, reach), size)
-    up = side(value, base, min(whole - offer.bought, reach), size)
+    up = side(value, base, max(0.0, min(whole - offer.bought, reach)), size)
     if not offer.bought:
         return down, up, up.slope
     nothing = value(0.0)
@@ -256,23 +295,26 @@ def _parcels(offer: Offer, value: Value, sizes: Sequence[float] | None) -> list[
 
 
 def _sentence(row: Record) -> str:
-    name = f"{row['month']}: {row['feed']} {row['source']}"
-    unit, today = row["trade_unit"], f"today {row['price_trade']:,.1f}"
+    name, unit = f"{row['month']}: {row['feed']} {row['source']}", row["trade_unit"]
+    today, walk_away, paid = f"today {row['price_trade']:,.1f}", row["walk_away_trade"], row["paid_anyway"]
+    planned = f"the planned {tonnage(row['bought'])}"
     if row["must_take"]:
-        return f"{name}: the planned {tonnage(row['bought'])} must be taken; the last tonne is worth {_shown(row['exit'])} per t."
-    if row["walk_away_trade"] is None:
-        if row["bought"]:
-            return f"{name}: the planned {tonnage(row['bought'])} cannot be done without at any price."
-        return f"{name} cannot be taken at any price."
+        worth = "cannot be left out" if row["exit"] is None else f"is worth {row['exit_trade']:,.1f} {unit}"
+        return f"{name}: {planned} must be taken; the last tonne {worth} ({today})."
     if not row["bought"]:
-        return f"{name} is not bought: its first tonne is worth {row['walk_away_trade']:,.1f} {unit}, {today}."
-    text = f"{name}: buy the planned {tonnage(row['bought'])} up to {row['walk_away_trade']:,.1f} {unit} ({today})"
-    if row["paid_anyway"]:
-        text += f", as {row['paid_anyway']:.0%} is paid even if it is not taken"
+        if row["next"] is None:
+            return f"{name} cannot be taken at any price."
+        if paid:
+            at = "at no price" if walk_away is None else f"below {walk_away:,.1f} {unit}"
+            return f"{name} is not bought though {percent(paid)} of the price is paid anyway: it would be {at} ({today})."
+        return f"{name} is not bought: its first tonne is worth {walk_away:,.1f} {unit}, {today}."
+    if row["exit"] is None:
+        return f"{name}: {planned} cannot be done without at any price."
+    if walk_away is None:
+        return f"{name}: {planned} are paid for in any case ({today})."
+    text = f"{name}: buy {planned} up to {walk_away:,.1f} {unit} ({today})"
+    if paid:
+        text += f", as {percent(paid)} is paid even if it is not taken"
     if row["step_down"] is not None:
         text += f"; above that the next step down is to {tonnage(row['step_down'])}"
     return text + "."
-
-
-def _shown(value: float | None) -> str:
-    return "nothing known" if value is None else f"{value:,.1f}"

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.tables import Column, Record, Table
-from olefinlp.answers.words import percent
+from olefinlp.answers.words import amount, percent
 from olefinlp.lp.compile import Label
 
 if TYPE_CHECKING:
@@ -66,7 +67,7 @@ def who_earns_the_margin(plan: Plan) -> Answer:
         "Margin by owner",
         (Column("group", "Group"), Column("earns", "Earns", money, "money"), Column("share", "Share", "%", "share")),
         [
-            {"group": group, "earns": value, "share": value / plan.solution.objective if plan.solution.objective else None}
+            {"group": group, "earns": value, "share": value / plan.solution.objective if plan.solution.objective > 0 else None}
             for group, value in sums.items()
             if value
         ],
@@ -79,17 +80,12 @@ def who_earns_the_margin(plan: Plan) -> Answer:
 def _account(plan: Plan) -> list[Record]:
     """Every row and column whose dual stands against a written number."""
     lp, solution = plan.lp, plan.solution
-    rows = [
-        _record(plan, label, float(y), float(high if y > 0 else low))
-        for label, y, low, high in zip(lp.rows, solution.row_dual, lp.row_low, lp.row_high, strict=True)
-        if y and (high if y > 0 else low)
-    ]
-    columns = [
-        _record(plan, label, float(d), float(high if d > 0 else low))
-        for label, d, low, high in zip(lp.columns, solution.reduced, lp.low, lp.high, strict=True)
-        if d and (high if d > 0 else low) and abs(high if d > 0 else low) != float("inf")
-    ]
-    return rows + columns
+    lines = (
+        *zip(lp.rows, solution.row_dual, lp.row_low, lp.row_high, strict=True),
+        *zip(lp.columns, solution.reduced, lp.low, lp.high, strict=True),
+    )
+    sides = ((label, float(dual), float(high if dual > 0 else low)) for label, dual, low, high in lines if dual)
+    return [_record(plan, label, dual, bound) for label, dual, bound in sides if bound and math.isfinite(bound)]
 
 
 def _record(plan: Plan, label: Label, dual: float, bound: float) -> Record:
@@ -114,15 +110,21 @@ def _record(plan: Plan, label: Label, dual: float, bound: float) -> Record:
 
 def _fixed_term(label: Label) -> str:
     """What a number in a balance is, or the end of a price step."""
-    kind, *names = label
-    words = {"utility_balance": "fixed use of", "feed_balance": "opening stock of", "cut_disposal": "opening stock of"}
-    return f"{words[kind]} {names[0]}" if kind in words else f"{' '.join(names[:-1])} end of step"
+    kind, name, *rest = label
+    if kind == "utility_balance":
+        return f"fixed use of {name}"
+    if kind in ("feed_balance", "cut_disposal"):
+        return f"opening stock of {name}"
+    return f"{name.replace('.', ' ')} end of step {rest[0]}"
 
 
 def _sentence(plan: Plan, sums: dict[str, float]) -> str:
     total = plan.solution.objective
-    if not total:
-        return "There is no margin to share."
     ordered = sorted((pair for pair in sums.items() if pair[1]), key=lambda pair: -pair[1])
-    parts = [f"{group} {percent(value / total)}" for group, value in ordered]
-    return f"Of the margin before fixed cost, {', '.join(parts)}."
+    if total > 0:
+        parts = [f"{group} {percent(value / total)}" for group, value in ordered]
+        return f"Of the margin before fixed cost, {', '.join(parts)}."
+    if not ordered:
+        return "There is no margin to share."
+    parts = [f"{group} {amount(value)}" for group, value in ordered]
+    return f"There is no margin to share, but {amount(-total)} k{plan.currency} of loss: {', '.join(parts)}."

@@ -33,7 +33,7 @@ def percent(share: float) -> str:
 def tonnage(kilotonnes: float) -> str:
     """A quantity of mass: kt to one decimal, t where that would show nothing.
 
-    >>> tonnage(47.558), tonnage(0.027215), tonnage(0.0)
+    >>> tonnage(47.558), tonnage(0.02722), tonnage(0.0)
     ('47.6 kt', '27.22 t', '0.0 kt')
     """
     if 0 < abs(kilotonnes) < 0.1:

@@ -147,7 +147,8 @@ def _sentence(row: Record) -> str:
         least = "" if row["next_loosened"] is not None else "at least "
         text += f", for {least}the next {percent(abs(end - row['value']) / abs(row['value']))}"
     if row["next_loosened"] is not None:
-        text += f", then {worth(row['next_loosened'])}"
+        then = worth(row["next_loosened"])
+        text += f", then {then if then != worth(row['worth_loosened']) else 'a little less'}"
     tightened = row["worth_tightened"]
     if tightened is not None and abs(tightened - row["worth_loosened"]) > 1e-6 * tightened:
         text += f"; one unit tighter costs {worth(tightened)}"
