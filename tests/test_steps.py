@@ -30,7 +30,8 @@ LINES = st.lists(
 class Exact:
     """The least (or greatest) of some lines between two ends, with a count of how often it was asked.
 
-    `choose` picks the slope at a breakpoint from those of the lines that meet there.
+    `choose` picks the slope at a breakpoint from those of the lines that meet there. Beyond an end there is nothing, so that
+    there any steeper slope is a tangent too: `steep` is how much steeper the one handed out is (concave functions only).
     """
 
     lines: Sequence[Line]
@@ -38,6 +39,7 @@ class Exact:
     low: Fraction = Fraction(LOW)
     high: Fraction = Fraction(HIGH)
     choose: Callable[[list[int]], float] = min
+    steep: float = 0.0
     asked: list[float] = field(default_factory=list)
 
     def value(self, at: Fraction) -> Fraction:
@@ -65,7 +67,8 @@ class Exact:
         exact = near[0] if near else Fraction(at)  # a breakpoint in thirds is no floating-point number
         if not self.low <= exact <= self.high:
             return None
-        return Point(at, float(self.value(exact)), self.choose(self.slopes(exact)))
+        beyond = self.steep * ((exact == self.low) - (exact == self.high))
+        return Point(at, float(self.value(exact)), self.choose(self.slopes(exact)) + beyond)
 
 
 def between(seed: int) -> Callable[[list[int]], float]:
@@ -107,6 +110,16 @@ def test_trace_from_a_breakpoint_to_another(lines: list[Line], greatest: bool, c
         return
     exact = Exact(lines, greatest, corners[0], corners[-1], choose)
     found = trace(exact, float(exact.low), float(exact.high), size_of(exact))
+    same_steps(found, exact)
+    assert len(exact.asked) <= 2 * len(found) + 1
+
+
+@settings(max_examples=100)
+@given(LINES, st.sampled_from([1.0, 50.0, 1e4]), st.integers(0, 9))
+def test_trace_between_the_ends_of_what_is_possible(lines: list[Line], steep: float, seed: int) -> None:
+    """At either end the tangent is steeper than any piece: its meetings with others lie on no breakpoint."""
+    exact = Exact(lines, choose=between(seed), steep=steep)
+    found = trace(exact, LOW, HIGH, size_of(exact))
     same_steps(found, exact)
     assert len(exact.asked) <= 2 * len(found) + 1
 
@@ -186,6 +199,16 @@ def test_one_side_of_a_breakpoint(lines: list[Line], greatest: bool, sign: int, 
         reach = sign * (min(Fraction(4), HIGH - abs(base)))
         assert start is not None
         same_side(side(exact, start, float(reach), size_of(exact)), expected_side(exact, base, reach))
+
+
+@settings(max_examples=100)
+@given(LINES, st.integers(-6, 6), st.sampled_from([-1, 1]), st.sampled_from([1.0, 50.0, 1e4]), st.integers(0, 9))
+def test_one_side_up_to_the_end_of_what_is_possible(lines: list[Line], at: int, sign: int, steep: float, seed: int) -> None:
+    """The farthest point looked at is the last that is possible, with a tangent steeper than what leads to it."""
+    exact = Exact(lines, choose=between(seed), steep=steep)
+    start, reach = exact(float(at)), Fraction(sign * HIGH - at)
+    assert start is not None
+    same_side(side(exact, start, float(reach), size_of(exact)), expected_side(exact, Fraction(at), reach))
 
 
 def test_a_short_step_beside_the_base_is_not_missed() -> None:

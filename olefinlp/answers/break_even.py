@@ -32,9 +32,9 @@ REACH = 0.25
 class Offer:
     """One source in one month: what is bought and what is offered, kt (inf: unlimited).
 
-    `must` is its minimum, `paid_anyway` the share of the (first) price that is paid for a tonne
-    below the take-or-pay quantity `committed`, taken or not. The last tonne bought is in the price
-    step `step` from `start` to `end` kt, at the price `marginal`.
+    `must` is its minimum, `paid_anyway` the share of the price that is paid for a tonne below the
+    take-or-pay quantity `committed`, taken or not. The last tonne bought is in the price step from
+    `start` to `end` kt, at the price `marginal`.
     """
 
     source: str
@@ -46,7 +46,6 @@ class Offer:
     paid_anyway: float
     price: Price
     marginal: Price
-    step: int
     start: float
     end: float
 
@@ -66,8 +65,6 @@ class Offer:
         inside = self.bought <= self.committed if below else self.bought < self.committed
         if not inside or not self.committed:
             return worth
-        if self.step > 1:
-            return worth + self.paid_anyway * self.price.value
         return worth / (1 - self.paid_anyway) if self.paid_anyway < 1 else None
 
     def next_volume(self, found: Side, below: bool) -> float | None:
@@ -135,7 +132,6 @@ def _offer(plan: Plan, source: str, month: str) -> Offer:
         paid_anyway=case.shortfall_pays.get((source, month), 0.0),
         price=case.prices[case.purchase_item(source, tiers[0]), month],
         marginal=case.prices[case.purchase_item(source, step), month],
-        step=step,
         start=ends[step - 2] if step > 1 else 0.0,
         end=min(ends[step - 1], offered),
     )

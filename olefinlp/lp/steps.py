@@ -118,10 +118,11 @@ def side(evaluate: Evaluate, base: Point, reach: float, size: float) -> Side:
         return Side(None, None, None)
     beyond: Point | None = None
     for _ in range(80):
-        if abs(base.value + far.slope * (far.at - base.at) - far.value) <= SAME * size:
+        slope = _straight(base, far, size)
+        if slope is not None:
             if beyond is None:
-                return Side(far.slope, far.at, None)
-            base, far, beyond = replace(base, slope=far.slope), beyond, None  # the slope is known: find its end
+                return Side(slope, far.at, None)
+            base, far, beyond = replace(base, slope=slope), beyond, None  # the slope is known: find its end
             continue
         at = _meeting(base, far) if base.slope != far.slope else base.at
         if abs(at - base.at) <= 1e-9 * abs(far.at - base.at) or not min(base.at, far.at) < at < max(base.at, far.at):
@@ -133,6 +134,17 @@ def side(evaluate: Evaluate, base: Point, reach: float, size: float) -> Side:
             return Side(base.slope, at, far.slope)
         beyond, far = far, middle
     return Side((far.value - base.value) / (far.at - base.at), far.at, beyond.slope if beyond else None)
+
+
+def _straight(base: Point, far: Point, size: float) -> float | None:
+    """The slope between two points, if one of their tangents passes through the other; None if it changes.
+
+    The far one may be the last that is possible, where a tangent may be as steep as it likes.
+    """
+    for slope in (far.slope, base.slope):
+        if abs(base.value + slope * (far.at - base.at) - far.value) <= SAME * size:
+            return slope
+    return None
 
 
 def _reachable(evaluate: Evaluate, base: Point, reach: float) -> Point | None:

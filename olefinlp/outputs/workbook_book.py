@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 import datetime
 import io
 import math
@@ -73,7 +74,7 @@ class Book:
         self.plan = plan
         self.title = one_line(plan.scenario.title)
         self._memory = io.BytesIO()
-        self.workbook: Any = xlsxwriter.Workbook(self._memory, OPTIONS)
+        self.workbook: Any = xlsxwriter.Workbook(self._memory, copy.deepcopy(OPTIONS))  # it writes into them
         self.workbook.set_properties(
             {
                 "title": clean(plan.scenario.title)[:200],
