@@ -13,16 +13,15 @@ from olefinlp.answers.answer import Answer
 from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.answers.words import money as money_words
 from olefinlp.answers.words import tonnage
+from olefinlp.lp.certificate import Bounds
 from olefinlp.lp.neighbours import Neighbours
 
 if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
 
 SHARE = 0.005
-EQUAL = 1e-9
-"""Share of the money that moves within which two margins are equal."""
-MOVES = 1e-4
-"""A range wider than this share of the largest flow is a decision that could differ."""
+MOVES = 1e-6
+"""A range at equal margin up to this share of the largest flow is what rounding leaves of none."""
 
 
 @dataclass(frozen=True)
@@ -88,13 +87,15 @@ def room_to_move(plan: Plan, share: float = SHARE) -> Answer:
 
 
 def _row(plan: Plan, neighbours: Neighbours, decision: Decision, share: float, alone: bool) -> Record:
-    low, high = _range(plan, neighbours, decision, share * abs(plan.solution.objective))
     equal_low = equal_high = decision.planned
     if not alone:
-        moved = sum(abs(line.amount) for line in plan.lines)
-        equal_low, equal_high = _range(plan, neighbours, decision, EQUAL * moved)
-        if equal_high - equal_low <= MOVES * plan.quantities.size * 1e-2:
+        equal_low, equal_high = _range(plan, neighbours, decision, *neighbours.all_optima())
+        if equal_high - equal_low <= MOVES * plan.quantities.size:
             equal_low = equal_high = decision.planned
+    low, high = equal_low, equal_high
+    if share:
+        floor = neighbours.base.objective - plan.lp.offset - share * abs(plan.solution.objective)
+        low, high = _range(plan, neighbours, decision, {neighbours.margin_row: (floor, math.inf)}, {})
     return {
         "month": decision.month,
         "decision": decision.kind,
@@ -109,19 +110,18 @@ def _row(plan: Plan, neighbours: Neighbours, decision: Decision, share: float, a
     }
 
 
-def _range(plan: Plan, neighbours: Neighbours, decision: Decision, money: float) -> tuple[float, float]:
-    """Least and most of a decision while the margin gives up no more than so much money."""
-    floor = neighbours.base.objective - plan.lp.offset - money
-    rows = {neighbours.margin_row: (floor, math.inf)}
+def _range(plan: Plan, neighbours: Neighbours, decision: Decision, rows: Bounds, columns: Bounds) -> tuple[float, float]:
+    """Least and most of a decision while these rows and columns are held."""
     weight = float(np.abs(plan.lp.cost).max(initial=1.0))  # duals as large as those of money, so as exact
+    own = list(decision.columns)
     ends = []
     for sign in (-1.0, 1.0):
         cost = np.zeros(len(plan.lp.columns))
-        cost[list(decision.columns)] = sign * weight
-        solution = neighbours.solve(cost=cost, rows=rows)
-        ends.append(decision.planned if solution is None else float(solution.x[list(decision.columns)].sum()))
-    small = plan.quantities.size * 1e-9
-    return tuple(0.0 if abs(end) < small else end for end in ends)  # type: ignore[return-value]
+        cost[own] = sign * weight
+        solution = neighbours.solve(cost=cost, rows=rows, columns=columns)
+        end = decision.planned if solution is None else float(solution.x[own].sum())
+        ends.append(0.0 if abs(end) < plan.quantities.size * 1e-9 else end)
+    return ends[0], ends[1]
 
 
 def _sentences(plan: Plan, rows: list[Record], share: float, money: float) -> tuple[str, ...]:

@@ -114,18 +114,27 @@ class Neighbours:
         if len(self._waiting) >= TOGETHER:
             self._prove_waiting()
 
+    @property
+    def small(self) -> float:
+        """A dual up to this may be what rounding leaves of nothing."""
+        return FREE * float(np.abs(self.lp.cost).max(initial=0.0))
+
     def only_one(self) -> bool:
         """Whether the base optimum is surely the only one: nothing outside the basis is free of cost."""
-        small = FREE * float(np.abs(self.lp.cost).max(initial=0.0))
         basic = highspy.HighsBasisStatus.kBasic
         for status, dual, low, high in (
             (self.basis.col_status, self.base.reduced, self.lp.low, self.lp.high),
             (self.basis.row_status, self.base.row_dual, self.lp.row_low, self.lp.row_high),
         ):
             outside = np.array([s != basic for s in status])
-            if np.any(outside & (np.abs(dual) <= small) & (low < high)):
+            if np.any(outside & (np.abs(dual) <= self.small) & (low < high)):
                 return False
         return True
+
+    def all_optima(self) -> tuple[Bounds, Bounds]:
+        """Bounds of rows and of columns that the optima keep, and no other plan: what has a dual stays at its limit."""
+        rows = _held(self.base.row_dual, self.lp.row_low, self.lp.row_high, self.small)
+        return rows, _held(self.base.reduced, self.lp.low, self.lp.high, self.small)
 
     def solve(
         self,
@@ -176,6 +185,12 @@ class Neighbours:
             highs.changeRowBounds(row, terms.low[row] * scale, terms.high[row] * scale)
         for column in columns:
             highs.changeColBounds(column, terms.low[first + column] * scale, terms.high[first + column] * scale)
+
+
+def _held(dual: Floats, low: Floats, high: Floats, small: float) -> Bounds:
+    places = np.flatnonzero(np.abs(dual) > small)
+    limits = np.where(dual > 0, high, low)[places].tolist()
+    return {int(place): (limit, limit) for place, limit in zip(places, limits, strict=True)}
 
 
 class RatioNeighbours:
