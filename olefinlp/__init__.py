@@ -122,7 +122,7 @@ def __getattr__(name: str) -> Any:
     if name not in _HOMES:
         raise AttributeError(f"module 'olefinlp' has no attribute {name!r}")
     if _HOMES[name].startswith("olefinlp.answers"):
-        import pyomo.environ  # noqa: F401  # first: it is three times slower to load after scipy or pint
+        import pyomo.core  # noqa: F401  # first: it is three times slower to load after scipy or pint
     return getattr(importlib.import_module(_HOMES[name]), name)
 
 

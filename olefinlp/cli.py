@@ -16,8 +16,10 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from olefinlp.cli_support import (
+    EXIT_FAILED,
     EXIT_INPUT,
     EXIT_OUTPUT,
+    NOT_PROVEN,
     answer_options,
     count,
     data,
@@ -94,7 +96,7 @@ def plan(
     room: Annotated[float, typer.Option(metavar="PERCENT", help="Share of the margin for the room to move.")] = 0.5,
 ) -> None:
     """Make the best plan, prove it, print a summary and write a workbook."""
-    import pyomo.environ  # noqa: F401  # first: it is three times slower to load after scipy
+    import pyomo.core  # noqa: F401  # first: it is three times slower to load after scipy
 
     from olefinlp.outputs import write_csv, write_json, write_workbook
     from olefinlp.outputs.records import plan_json
@@ -148,7 +150,7 @@ def export(
     price_case: PriceCase = None,
 ) -> None:
     """Write the linear program with readable names, for any solver."""
-    import pyomo.environ  # noqa: F401
+    import pyomo.core  # noqa: F401
 
     from olefinlp.outputs import write_lp
     from olefinlp.outputs.files import OutputError
@@ -178,10 +180,12 @@ def curve(
     csv_file: Annotated[Path | None, typer.Option("--csv", metavar="FILE", help="Table as csv.")] = None,
 ) -> None:
     """Follow the plan exactly along one price, one limit, or the ratio of two cuts."""
-    import pyomo.environ  # noqa: F401
+    import pyomo.core  # noqa: F401
 
     from olefinlp.answers.curves import step_curve
     from olefinlp.answers.ratio_curve import ratio_curve
+    from olefinlp.lp.certificate import CertificateError
+    from olefinlp.lp.neighbours import NeighbourError
     from olefinlp.outputs.answer_files import answer_text, write_answer, write_answer_csv
     from olefinlp.outputs.files import OutputError
 
@@ -196,6 +200,8 @@ def curve(
             found = step_curve(made, item, low, high, month)
     except ValueError as error:
         stop(str(error), EXIT_INPUT)
+    except (CertificateError, NeighbourError) as error:
+        stop(f"{error}\n{NOT_PROVEN}", EXIT_FAILED)
     typer.echo(answer_text(found))
     try:
         if output:
@@ -217,7 +223,7 @@ def explain(
     output: Annotated[Path | None, typer.Option("--output", "-o", help="Workbook with all tables of the answer.")] = None,
 ) -> None:
     """Say which limits make a month impossible and what to relax; of a possible month, why a feed is not bought."""
-    import pyomo.environ  # noqa: F401
+    import pyomo.core  # noqa: F401
 
     from olefinlp.outputs.answer_files import answer_text, write_answer
     from olefinlp.outputs.files import OutputError

@@ -314,3 +314,32 @@ def _sentence(row: Record) -> str:
     if row["step_down"] is not None:
         text += f"; above that the next step down is to {tonnage(row['step_down'])}"
     return text + "."
+
+
+def first_tonne_worths(plan: Plan) -> dict[tuple[str, str], float | None]:
+    """Worth of the first tonne of sources whose feed would make what the plan makes nothing of.
+
+    What is not made has a shadow price that may stand anywhere, so these are found by solving with
+    a little of the feed forced in. Elsewhere the shadow prices tell, and nothing is solved.
+    """
+    q, found = plan.quantities, {}
+    for offer in offers(plan) if any(_makes_new(plan, offer) for offer in offers(plan)) else ():
+        if _makes_new(plan, offer):
+            value = Value(plan.neighbours, offer, q.case.sources[offer.source].tiers)
+            none = value(0.0)
+            size = min(offer.offered, 1.0) * 1e-3
+            moved = sum(abs(line.amount) for line in plan.lines) or 1.0
+            slope = None if none is None else side(value, none, size, moved).slope
+            found[offer.source, offer.month] = slope
+    return found
+
+
+def _makes_new(plan: Plan, offer: Offer) -> bool:
+    """Whether a source that is not bought would make a component that the plan has none of."""
+    q, case = plan.quantities, plan.quantities.case
+    if offer.bought or case.sources[offer.source].kind != "feeds":
+        return False
+    parcel = case.parcel_of[offer.source, offer.month]
+    modes = [mode for mode, p, _ in case.charges_in[offer.month] if p == parcel]
+    made = {c for mode in modes for c, share in case.yields[mode, parcel].items() if share}
+    return any(not q.value("component_made", c, offer.month) for c in made)

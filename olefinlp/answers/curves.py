@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+import functools
+import math
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -13,7 +15,7 @@ from olefinlp.inputs.case import Case, Limit
 from olefinlp.inputs.findings import near_name
 from olefinlp.inputs.prices import item_name
 from olefinlp.lp.compile import Floats, PriceMap
-from olefinlp.lp.neighbours import Neighbours
+from olefinlp.lp.neighbours import NeighbourError, Neighbours
 from olefinlp.lp.steps import Evaluate, Point, Step, trace
 
 if TYPE_CHECKING:
@@ -21,13 +23,16 @@ if TYPE_CHECKING:
 
 PRICE_SPAN, LIMIT_SPAN = 0.3, 0.5
 """How far a curve goes on each side of today, as a share, when no range is given."""
+QUANTITIES = {"GJ LHV": "TJ LHV", "MWh": "GWh", "t": "kt", "t held": "kt held"}
+"""What a price is per → what it prices, as the plan counts it."""
 
 
 @dataclass(frozen=True)
 class Axis:
     """What a curve runs along: one number as people write it, and what it does to the program.
 
-    `factor` turns the written number into the plan's, `sign` turns a slope into the quantity shown.
+    `factor` turns the written number into the plan's, `slope_scale` a slope into the quantity shown;
+    `low` and `high` are how far the number can go at all, as the plan counts it.
     """
 
     item: str
@@ -38,30 +43,41 @@ class Axis:
     is_price: bool
     slope_unit: str
     slope_scale: float
+    low: float
+    high: float
+    note: str = ""
 
 
 def step_curve(plan: Plan, item: str, low: float | None = None, high: float | None = None, month: str | None = None) -> Answer:
-    """The exact curve of one price or limit, by tangent intersection; about 2n + 1 solves for n steps.
+    """The exact curve of one price or limit, by tangent intersection; 2n + 1 solves for n steps.
 
     `item` is a path as written in the files: `feeds.ethane.contract` or `outlets.x` (price),
     `feeds.ethane.contract.max`, `outlets.x.min`, `recovery_units.x.capacity`,
     `furnace_groups.x.hours`, `limits.x.max`, `utilities.x.max`, `stocks.x.max` … (limit). `low` and
-    `high` are in the unit in which it is written. Several months move together unless one is named.
+    `high` are in the unit in which a price is written, or in which the table of limits shows a limit.
+    Several months move together unless one is named: prices by the same amount, limits in proportion
+    to the first. A range is cut where no plan is possible, and where a price of a step would pass
+    that of the step beside it.
 
-    Raises `ValueError` for an unknown item (with the nearest name) or an empty range.
+    Raises `ValueError` for an unknown item (with the nearest name), an empty range, or a price at
+    which the margin has no end.
     """
     axis = _axis(plan, item, month)
+    axis = replace(axis, evaluate=functools.cache(axis.evaluate))  # an end is looked at twice
     span = PRICE_SPAN if axis.is_price else LIMIT_SPAN
     size = abs(axis.today) or 1.0
-    start = (axis.today - span * size if low is None else low) * axis.factor
-    stop = (axis.today + span * size if high is None else high) * axis.factor
-    if not axis.is_price:
-        start = max(start, 0.0)
+    start = max((axis.today - span * size if low is None else low) * axis.factor, axis.low)
+    stop = min((axis.today + span * size if high is None else high) * axis.factor, axis.high)
     if not start < stop:
         raise ValueError(f"the range {start / axis.factor:g} to {stop / axis.factor:g} {axis.unit} is empty")
-    start, stop = _possible(axis, start, stop)
     money = sum(abs(line.amount) for line in plan.lines)
-    steps = trace(axis.evaluate, start, stop, money)
+    try:
+        with plan.neighbours.proven_together():
+            start, stop = _possible(axis, start, stop)
+            steps = trace(axis.evaluate, start, stop, money)
+    except NeighbourError as error:
+        text = f"between {start / axis.factor:g} and {stop / axis.factor:g} {axis.unit} the margin has no end: ask for less"
+        raise ValueError(text) from error
     return _answer(plan, axis, steps)
 
 
@@ -150,22 +166,51 @@ def _price_axis(plan: Plan, item: str, months: tuple[str, ...]) -> Axis:
         return None if solution is None else Point(value, solution.objective, float(direction @ solution.x))
 
     factor, unit = (1.0, price.unit_used) if price.of else (price.factor, price.unit)
-    quantity = {"GJ LHV": "TJ LHV", "MWh": "GWh", "t": "kt", "t held": "kt held"}.get(price.unit_used.partition("/")[2], "")
+    quantity = QUANTITIES.get(price.unit_used.partition("/")[2], "pieces")
     scale = 1000.0 if price.unit_used == case.currency else 1.0
-    return Axis(item, today / factor, unit, factor, evaluate, True, quantity, scale)
+    low, high = _between_steps(case, item, months)
+    note = "All months move by the same amount. " if len(months) > 1 else ""
+    return Axis(item, today / factor, unit, factor, evaluate, True, quantity, scale, low, high, note)
+
+
+def _between_steps(case: Case, item: str, months: tuple[str, ...]) -> tuple[float, float]:
+    """How far a price of a step can go before it passes the next: purchases get dearer, sales cheaper."""
+    low, high = -math.inf, math.inf
+    body, steps, step = item.rpartition(".tiers.")
+    if not steps:
+        return low, high
+    first = case.prices[item, months[0]].value
+    moved = price_derivatives(case, item, months)
+    for by in (-1, 1):
+        other = f"{body}.tiers.{int(step) + by}"
+        gaps = [
+            case.prices[other, m].value - case.prices[item, m].value
+            for m in months
+            if (other, m) in case.prices and (other, m) not in moved
+        ]
+        if gaps and (by < 0) != body.startswith("outlets."):
+            low = first + max(gaps)
+        elif gaps:
+            high = first + min(gaps)
+    return low, high
 
 
 def _limit_axis(plan: Plan, item: str, limits: list[tuple[Limit, bool]]) -> Axis:
     neighbours = plan.neighbours
     first, low_side = limits[0]
-    written = first.low if low_side else first.high
+    written = _side(first, low_side)
     rows = {neighbours.lp.row_at[f"{limit.family}_limit", *limit.key]: limit for limit, _ in limits if _there(neighbours, limit)}
+
+    def moved(limit: Limit, value: float) -> tuple[float, float]:
+        """A limit when the first is at a value, and how fast it moves: in proportion, or from zero at the same rate."""
+        share = _side(limit, low_side) / written if written else first.scale / limit.scale
+        return (0.0 if written else _side(limit, low_side)) + share * value, share
 
     def evaluate(value: float) -> Point | None:
         bounds = {}
         for row, limit in rows.items():
-            own = value * first.scale / limit.scale  # months of other lengths: the same rate
             low, high = float(neighbours.lp.row_low[row]), float(neighbours.lp.row_high[row])
+            own, _ = moved(limit, value)
             bounds[row] = (own, high) if low_side else (low, own)
             if bounds[row][0] > bounds[row][1]:
                 return None
@@ -173,12 +218,26 @@ def _limit_axis(plan: Plan, item: str, limits: list[tuple[Limit, bool]]) -> Axis
         if solution is None:
             return None
         clip = min if low_side else max  # where both sides meet, only a dual of this side's sign is this side's
-        slope = sum(clip(float(solution.row_dual[row]), 0.0) * first.scale / limit.scale for row, limit in rows.items())
+        slope = sum(clip(float(solution.row_dual[row]), 0.0) * moved(limit, value)[1] for row, limit in rows.items())
         return Point(value, solution.objective, slope)
 
-    currency = plan.currency
-    today = (written or 0.0) * first.scale
-    return Axis(item, today, first.unit, 1 / first.scale, evaluate, False, f"{currency}/{first.worth_unit}", first.worth_scale)
+    return Axis(
+        item=item,
+        today=written * first.scale,
+        unit=first.unit,
+        factor=1 / first.scale,
+        evaluate=evaluate,
+        is_price=False,
+        slope_unit=f"{plan.currency}/{first.worth_unit}",
+        slope_scale=first.worth_scale,
+        low=0.0,
+        high=math.inf,
+        note=f"All months move in proportion to {first.month}. " if len(limits) > 1 else "",
+    )
+
+
+def _side(limit: Limit, low_side: bool) -> float:
+    return float((limit.low if low_side else limit.high) or 0.0)
 
 
 def _there(neighbours: Neighbours, limit: Limit) -> bool:
@@ -186,17 +245,20 @@ def _there(neighbours: Neighbours, limit: Limit) -> bool:
 
 
 def _possible(axis: Axis, start: float, stop: float) -> tuple[float, float]:
-    """The part of the range that has a plan, found by halving from today's value."""
+    """The part of the range that has a plan, found by halving from today's value; prices forbid none."""
+    if axis.is_price:
+        return start, stop
+    there = [axis.evaluate(end) is not None for end in (start, stop)]
+    if all(there):
+        return start, stop
     inside = min(max(axis.today * axis.factor, start), stop)
     if axis.evaluate(inside) is None:
         raise ValueError("no plan is possible anywhere near today's value in this range")
-    return _edge(axis, inside, start), _edge(axis, inside, stop)
+    return start if there[0] else _edge(axis, inside, start), stop if there[1] else _edge(axis, inside, stop)
 
 
-def _edge(axis: Axis, inside: float, wanted: float) -> float:
-    if axis.evaluate(wanted) is not None:
-        return wanted
-    good, bad = inside, wanted
+def _edge(axis: Axis, good: float, bad: float) -> float:
+    """The last value with a plan on the way from one that has to one that has not."""
     for _ in range(40):
         middle = (good + bad) / 2
         good, bad = (middle, bad) if axis.evaluate(middle) is not None else (good, middle)
@@ -215,18 +277,22 @@ def _answer(plan: Plan, axis: Axis, steps: list[Step]) -> Answer:
         Column("today", "Today"),
     )
     noise = 1e-9 * max(abs(step.slope) for step in steps)
+    sign = -1 if all(step.slope <= noise for step in steps) else 1  # what is bought, or a minimum, is no negative quantity
     rows: list[Record] = [
         {
             "low": step.low / axis.factor,
             "high": step.high / axis.factor,
-            "level": abs(step.slope) * axis.slope_scale if abs(step.slope) > noise else 0.0,
+            "level": sign * step.slope * axis.slope_scale if abs(step.slope) > noise else 0.0,
             "margin_low": step.value_low,
             "margin_high": step.value_high,
             "today": "here" if step.low / axis.factor <= axis.today <= step.high / axis.factor else "",
         }
         for step in steps
     ]
-    note = "Exact: every step is where the plan changes. Other prices and limits are held. At a step the value is not one number."
+    note = (
+        axis.note
+        + "Exact: every step is where the plan changes. Other prices and limits are held. At a step the value is not one number."
+    )
     table = Table("curve", f"Steps of {axis.item}", columns, rows, note)
     chart = Chart(
         "steps", f"{name} against {axis.item}", "low", "high", "level", f"{axis.unit}", f"{axis.slope_unit}", axis.today
@@ -243,4 +309,5 @@ def _sentence(axis: Axis, rows: list[Record]) -> str:
         text += f", above that {rows[here + 1]['level']:,.4g}"
     if here > 0:
         text += f", below that {rows[here - 1]['level']:,.4g}"
-    return f"{text}; {len(rows)} steps between {rows[0]['low']:,.4g} and {rows[-1]['high']:,.4g} {axis.unit}."
+    steps = "1 step" if len(rows) == 1 else f"{len(rows)} steps"
+    return f"{text}; {steps} between {rows[0]['low']:,.4g} and {rows[-1]['high']:,.4g} {axis.unit}."

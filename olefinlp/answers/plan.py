@@ -105,7 +105,9 @@ class Plan:
     @functools.cached_property
     def feeds(self) -> Table:
         """What is bought."""
-        return feeds_table(self.quantities)
+        from olefinlp.answers.break_even import first_tonne_worths
+
+        return feeds_table(self.quantities, first_tonne_worths(self))
 
     @functools.cached_property
     def furnaces(self) -> Table:

@@ -2,14 +2,20 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 from olefinlp.answers.quantities import Quantities
 from olefinlp.answers.tables import Column, Record, Table
 
 MONTH = Column("month", "Month")
 
 
-def feeds_table(q: Quantities) -> Table:
-    """Every step of every source, bought or not; `worth` is the value of one more tonne at the gate."""
+def feeds_table(q: Quantities, first_tonnes: Mapping[tuple[str, str], float | None]) -> Table:
+    """Every step of every source, bought or not; `worth` is the value of one more tonne at the gate.
+
+    `first_tonnes` are worths by (source, month) that shadow prices alone cannot tell: a feed that
+    would make what nothing else makes.
+    """
     case, currency = q.case, q.case.currency
     columns = (
         MONTH,
@@ -54,7 +60,9 @@ def feeds_table(q: Quantities) -> Table:
                         "shortfall": q.value("shortfall", source, month) if data.take_or_pay and step == 1 else None,
                         "price_written": price.text,
                         "price": price.value,
-                        "worth": worth_at_gate(q, source, step, month),
+                        "worth": first_tonnes[source, month]
+                        if (source, month) in first_tonnes
+                        else worth_at_gate(q, source, step, month),
                         "cost": bought * price.value,
                     }
                 )

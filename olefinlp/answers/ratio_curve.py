@@ -1,18 +1,22 @@
 """Best margin against the ratio of two cuts, such as propylene to ethylene.
 
 The ratio is a coefficient of the program, so the curve is neither made of straight pieces nor
-concave: points are placed where a smooth curve through their values and slopes would miss a point
-between them by more than the stated error.
+concave: points are placed until straight lines between them miss by no more than an error. How far
+they miss is read from the slopes at both ends; where the curve is bent one way between two points it
+is inside the triangle of its chord and its two tangents.
 """
 
 from __future__ import annotations
 
+import functools
+import itertools
+import math
 from collections.abc import Callable
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from olefinlp.answers.answer import Answer, Chart
 from olefinlp.answers.tables import Column, Record, Table
+from olefinlp.answers.words import money as money_words
 from olefinlp.inputs.findings import near_name
 from olefinlp.lp.neighbours import RatioNeighbours
 from olefinlp.lp.steps import Point
@@ -22,17 +26,10 @@ if TYPE_CHECKING:
 
 SPAN = 0.25
 ERROR = 1e-4
-"""Largest miss of the curve between its points, as a share of the best margin."""
-DEPTH = 8
+"""How far straight lines between the points may miss, as a share of the best margin."""
+DEPTH = 24
 FLAT = 0.005
-
-
-@dataclass(frozen=True)
-class Ends:
-    """The range of ratios within which the margin gives up no more than a share."""
-
-    low: float
-    high: float
+Evaluate = Callable[[float], Point | None]
 
 
 def ratio_curve(
@@ -41,9 +38,15 @@ def ratio_curve(
     """Best margin with the ratio of two cuts held, over a range of ratios.
 
     Ratios are by mass, over all months together. The range is a quarter on each side of the plan's
-    own ratio unless given. Raises `ValueError` for an unknown cut or when none of the second is made.
+    own ratio unless given, and is cut where no plan has such a ratio. `error` is how far straight
+    lines between the points may miss, as a share of the margin.
+
+    Raises `ValueError` for an unknown cut, when none of the second is made, for an empty range, and
+    when no plan has a ratio in the range.
     """
     cuts = plan.quantities.case.cuts
+    if of == to:
+        raise ValueError(f"a ratio needs two cuts, not `{of}` twice")
     for cut in (of, to):
         if cut not in cuts:
             raise ValueError(f"`{cut}` is no cut of this plant; {near_name(cut, cuts)}")
@@ -55,90 +58,118 @@ def ratio_curve(
     if not 0 <= start < stop:
         raise ValueError(f"the range {start:g} to {stop:g} is empty or below zero")
     held = RatioNeighbours(plan.lp, _columns(plan, of), _columns(plan, to))
+    evaluate = functools.cache(held.evaluate)
     best = Point(today, plan.solution.objective, 0.0)
-    points, miss = _points(held.evaluate, best, start, stop, error * abs(plan.solution.objective))
-    return _answer(plan, (of, to), points, today, miss)
+    points, miss = _points(evaluate, best, start, stop, error * abs(best.value))
+    return _answer(plan, (of, to), points, best, miss, _flat_top(evaluate, points, best))
 
 
 def _columns(plan: Plan, cut: str) -> list[int]:
     return [plan.lp.column_at["cut_made", cut, month] for month in plan.quantities.case.months]
 
 
-def _points(
-    evaluate: Callable[[float], Point | None], best: Point, start: float, stop: float, error: float
-) -> tuple[list[Point], float]:
-    """Points from start to stop through the best one, close enough; and the largest miss seen."""
+def _points(evaluate: Evaluate, best: Point, start: float, stop: float, error: float) -> tuple[list[Point], float]:
+    """Points from start to stop, with the best one if it lies between, close enough; and how far lines miss at most."""
     worst = 0.0
 
     def between(a: Point, b: Point, depth: int) -> list[Point]:
         nonlocal worst
-        middle = evaluate((a.at + b.at) / 2)
-        if middle is None:
-            return []
-        miss = abs(middle.value - _smooth(a, b, middle.at))
+        miss = _miss(a, b)
         if miss <= error or depth == 0:
             worst = max(worst, miss)
-            return [middle]
+            return []
+        middle = evaluate(_split(a, b))
+        if middle is None:
+            raise ValueError(f"no plan between two plans at ratios {a.at:g} and {b.at:g}")
         return [*between(a, middle, depth - 1), middle, *between(middle, b, depth - 1)]
 
-    low, high = _edge(evaluate, best.at, start), _edge(evaluate, best.at, stop)
-    points = [best]
-    if low is not None and low.at < best.at:
-        points = [low, *between(low, best, DEPTH), *points]
-    if high is not None and high.at > best.at:
-        points = [*points, *between(best, high, DEPTH), high]
+    inside = best if start <= best.at <= stop else evaluate(min(max(best.at, start), stop))
+    if inside is None:
+        raise ValueError(f"no plan has a ratio from {start:g} to {stop:g}")
+    ends = sorted({p.at: p for p in (_edge(evaluate, inside, start), inside, _edge(evaluate, inside, stop))}.values(), key=_at)
+    points = [ends[0]]
+    for a, b in itertools.pairwise(ends):
+        points += [*between(a, b, DEPTH), b]
     return points, worst
 
 
-def _edge(evaluate: Callable[[float], Point | None], inside: float, wanted: float) -> Point | None:
+def _at(point: Point) -> float:
+    return point.at
+
+
+def _edge(evaluate: Evaluate, inside: Point, wanted: float) -> Point:
     """The point wanted, or the farthest towards it that has a plan."""
-    point = evaluate(wanted)
-    if point is not None:
-        return point
-    good: Point | None = None
-    near, far = inside, wanted
-    for _ in range(30):
-        middle = (near + far) / 2
-        found = evaluate(middle)
-        near, far, good = (middle, far, found) if found is not None else (near, middle, good)
+    if wanted == inside.at:
+        return inside
+    good, bad = inside, wanted
+    for step in range(41):
+        at = wanted if step == 0 else (good.at + bad) / 2
+        found = evaluate(at)
+        if found is None:
+            bad = at
+        elif step == 0:
+            return found
+        else:
+            good = found
     return good
 
 
-def _smooth(a: Point, b: Point, at: float) -> float:
-    """The cubic with the values and slopes of two points (Hermite)."""
+def _bends(a: Point, b: Point) -> tuple[float, float]:
+    """How far each end's tangent has left the chord at the other end; of one sign where the curve is bent one way."""
     width = b.at - a.at
-    s = (at - a.at) / width
-    return float(
-        (1 + 2 * s) * (1 - s) ** 2 * a.value
-        + s * (1 - s) ** 2 * width * a.slope
-        + s * s * (3 - 2 * s) * b.value
-        + s * s * (s - 1) * width * b.slope
-    )
+    chord = b.value - a.value
+    return a.slope * width - chord, chord - b.slope * width
 
 
-def flat_top(points: list[Point], share: float = FLAT) -> Ends:
-    """Where the margin is within a share of the best, straight between points."""
-    best = max(p.value for p in points)
-    floor = best - share * abs(best)
-    top = max(range(len(points)), key=lambda i: points[i].value)
-    low = high = points[top].at
-    for i in range(top, 0, -1):
-        a, b = points[i - 1], points[i]
-        low = a.at
-        if a.value < floor:
-            low = b.at - (b.at - a.at) * (b.value - floor) / (b.value - a.value)
+def _miss(a: Point, b: Point) -> float:
+    """How far the curve can be from its chord: the height of the triangle with the tangents."""
+    first, last = _bends(a, b)
+    if first * last < 0:
+        return max(abs(first), abs(last)) / 2
+    return abs(first * last / (first + last)) if first * last else 0.0
+
+
+def _split(a: Point, b: Point) -> float:
+    """Where the tangents meet, which is where a bend is if there is one; half way if they do not."""
+    first, last = _bends(a, b)
+    share = last / (first + last) if first * last > 0 else 0.5
+    return a.at + min(max(share, 1 / 64), 63 / 64) * (b.at - a.at)
+
+
+def _flat_top(evaluate: Evaluate, points: list[Point], best: Point) -> tuple[float, float]:
+    """The ratios among those looked at within which no more than a share of the best margin is given up.
+
+    The margin rises up to the best ratio and falls after it, as plans can be mixed: one range.
+    """
+    floor = best.value - FLAT * abs(best.value)
+    inside = [point for point in points if point.value >= floor]
+    if not inside:
+        return math.nan, math.nan
+    first, last = points.index(inside[0]), points.index(inside[-1])
+    low = inside[0] if first == 0 else _crossing(evaluate, inside[0], points[first - 1], floor)
+    high = inside[-1] if last == len(points) - 1 else _crossing(evaluate, inside[-1], points[last + 1], floor)
+    return low.at, high.at
+
+
+def _crossing(evaluate: Evaluate, inside: Point, outside: Point, floor: float) -> Point:
+    """The last point at the floor or above it, between one above and one below."""
+    for count in range(60):
+        if inside.value - floor <= 1e-9 * abs(floor):
             break
-    for a, b in zip(points[top:], points[top + 1 :], strict=False):
-        high = b.at
-        if b.value < floor:
-            high = a.at + (b.at - a.at) * (a.value - floor) / (a.value - b.value)
-            break
-    return Ends(low, high)
+        share = (inside.value - floor) / (inside.value - outside.value)
+        at = inside.at + (share if count % 2 == 0 else 0.5) * (outside.at - inside.at)
+        found = evaluate(at)
+        if found is not None and found.value >= floor:
+            inside = found
+        elif found is not None:
+            outside = found
+    return inside
 
 
-def _answer(plan: Plan, cuts: tuple[str, str], points: list[Point], today: float, miss: float) -> Answer:
+def _answer(
+    plan: Plan, cuts: tuple[str, str], points: list[Point], best: Point, miss: float, flat: tuple[float, float]
+) -> Answer:
     of, to = cuts
-    best = plan.solution.objective
     money = f"k{plan.currency}"
     columns = (
         Column("ratio", f"{of} to {to}", "t/t", "price"),
@@ -151,21 +182,32 @@ def _answer(plan: Plan, cuts: tuple[str, str], points: list[Point], today: float
         {
             "ratio": p.at,
             "margin": p.value,
-            "loss": best - p.value,
-            "share": (best - p.value) / abs(best) if best else None,
-            "today": "here" if p.at == today else "",
+            "loss": best.value - p.value,
+            "share": (best.value - p.value) / abs(best.value) if best.value else None,
+            "today": "here" if p.at == best.at else "",
         }
         for p in points
     ]
-    ends = flat_top(points)
-    first = (
-        f"The plan makes {today:.3f} t of {of} per t of {to}; any ratio from {ends.low:.3f} to {ends.high:.3f} costs less than "
-    )
-    first += f"{FLAT * abs(best):,.0f} {money} ({100 * FLAT:g} %)."
-    second = f"Between the points shown a smooth curve misses by up to {miss:,.1f} {money}."
-    third = f"Looked at {points[0].at:.3f} to {points[-1].at:.3f}: at the ends {best - points[0].value:,.0f} and "
-    third += f"{best - points[-1].value:,.0f} {money} are given up."
     note = "Plant ratio by mass, all months together; it is not the ratio at one furnace's outlet."
     table = Table("ratio_curve", f"Margin against {of} to {to}", columns, rows, note)
-    chart = Chart("line", f"Best margin against {of} to {to}", "ratio", "ratio", "margin", "t/t", money, today)
-    return Answer("ratio_curve", f"Margin against the ratio of {of} to {to}", (table,), (first, third, second), note, chart)
+    chart = Chart("line", f"Best margin against {of} to {to}", "ratio", "ratio", "margin", "t/t", money, best.at)
+    sentences = _sentences(plan.currency, cuts, points, best, miss, flat)
+    return Answer("ratio_curve", f"Margin against the ratio of {of} to {to}", (table,), sentences, note, chart)
+
+
+def _sentences(
+    currency: str, cuts: tuple[str, str], points: list[Point], best: Point, miss: float, flat: tuple[float, float]
+) -> tuple[str, ...]:
+    decimals = max(3, 2 - math.floor(math.log10(max(points[-1].at, 1e-12))))
+    part = 10.0**-decimals
+    low, high = math.ceil(flat[0] / part - 1e-9) * part, math.floor(flat[1] / part + 1e-9) * part
+    share = f"{money_words(FLAT * abs(best.value), currency)} ({100 * FLAT:g} %)"
+    first = f"The plan makes {best.at:.{decimals}f} t of {cuts[0]} per t of {cuts[1]}; "
+    if low <= high:
+        first += f"any ratio from {low:.{decimals}f} to {high:.{decimals}f} costs less than {share}."
+    else:
+        first += f"no ratio shown to {decimals} decimals costs less than {share}."
+    ends = [f"at {p.at:.{decimals}f} {money_words(best.value - p.value, currency)}" for p in (points[0], points[-1])]
+    second = f"Given up at the ends of what was looked at: {' and '.join(ends)}."
+    third = f"Between the points shown straight lines miss by up to {money_words(miss, currency)}."
+    return first, second, third

@@ -21,7 +21,7 @@ RELATIVE = frozenset(("of", "times", "plus", "freight"))
 class FileModel(BaseModel):
     """Base of everything read from YAML: frozen, unknown names refused."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True, arbitrary_types_allowed=True)
+    model_config = ConfigDict(extra="forbid", frozen=True, arbitrary_types_allowed=True, defer_build=True)
 
 
 @dataclass(frozen=True)

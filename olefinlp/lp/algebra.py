@@ -15,7 +15,7 @@ import math
 from collections.abc import Iterable, Iterator
 from typing import Any
 
-import pyomo.environ as pyo
+import pyomo.core as pyo  # not pyomo.environ, which loads solver interfaces that are not used here
 from pyomo.common.gc_manager import PauseGC
 
 from olefinlp.inputs.case import Case, Part

@@ -117,6 +117,12 @@ class ClashFinder:
             step = max(1, min(step, len(kept)) // 2)
 
 
+def clashes(lp: LabelledLp) -> bool:
+    """Whether the limits of a program clash at all."""
+    finder = ClashFinder(lp)
+    return finder.clash(finder.sides)
+
+
 def clashing_sets(lp: LabelledLp) -> list[list[Side]] | None:
     """Irreducible sets of clashing sides of limit rows, none sharing a side with another.
 

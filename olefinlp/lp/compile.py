@@ -10,7 +10,7 @@ from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
-import pyomo.environ as pyo
+import pyomo.core as pyo
 from numpy.typing import NDArray
 from pyomo.common.gc_manager import PauseGC
 from pyomo.core.base.enums import SortComponents

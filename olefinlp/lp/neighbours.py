@@ -15,6 +15,7 @@ import highspy
 import numpy as np
 
 from olefinlp.lp.certificate import Bounds, Solved, Terms, certificates, prove, proven, terms_of
+from olefinlp.lp.clash import clashes
 from olefinlp.lp.compile import Floats, Integers, LabelledLp
 from olefinlp.lp.solver import Solver, Status
 from olefinlp.lp.steps import Point
@@ -221,18 +222,21 @@ class RatioNeighbours:
         for column in self.to:
             self.solver.highs.changeCoeff(self.row, column, -ratio)
         if self.basis is not None:
+            self.solver.highs.clearSolver()
             self.solver.highs.setBasis(self.basis)
         self.solves += 1
         outcome = self.solver.solve()
-        if outcome.status is Status.INFEASIBLE:
-            return None
+        value = self.lp.value.copy()
+        value[len(value) - len(self.to) :] = -ratio
+        changed = replace(self.lp, value=value)
         if outcome.solution is None:
+            # far from what a plant can do a solver may not know: then the elastic copy decides
+            if outcome.status is Status.INFEASIBLE or clashes(changed):
+                return None
             raise NeighbourError(f"a neighbour ended as {outcome.message}")
         if self.basis is None:
             self.basis = self.solver.highs.getBasis()
         solution = outcome.solution
-        value = self.lp.value.copy()
-        value[len(value) - len(self.to) :] = -ratio
-        prove(replace(self.lp, value=value), solution)
+        prove(changed, solution)
         slope = float(solution.row_dual[self.row]) * float(solution.x[self.to].sum())
         return Point(ratio, solution.objective, slope)
