@@ -38,6 +38,8 @@ if TYPE_CHECKING:
     from olefinlp.answers.answer import Answer
     from olefinlp.cli_support import Writer
 
+FEW_MONTHS = 3
+"""From more months on, a person waiting is told for what."""
 
 app = typer.Typer(
     help="Plan a month of a light-olefins plant: which feeds to buy, how to crack them, what to sell, for the best margin.",
@@ -111,6 +113,8 @@ def plan(
     if not quick:
         from olefinlp.answers.default import default_answers
 
+        if len(made.quantities.case.months) > FEW_MONTHS:
+            note("solving around the plan for its answers, a few seconds a month; --quick leaves them out")
         answers = default_answers(made, sizes, share)
     if json_file == "-":
         data(plan_json(made, answers))

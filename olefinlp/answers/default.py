@@ -19,24 +19,35 @@ if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
 
 
+MOST_PERIODS = 12
+
+
 def default_answers(plan: Plan, parcels: Sequence[float] | None = None, share: float = SHARE) -> tuple[Answer, ...]:
     """Break-evens, worth of limits, who earns the margin, room to move, cash cost.
 
-    Under 400 solves for a month. An answer that cannot be proven says so in place of its numbers;
-    the plan stands.
+    Under 400 solves for a month; those that solve once or more a decision are left out, and say so,
+    where there are more than `MOST_PERIODS` periods. An answer that cannot be proven says so in
+    place of its numbers; the plan stands.
     """
     return (
-        _or_reason("Break-even prices of feeds", lambda: break_even_prices(plan, parcels)),
-        _or_reason("What the limits are worth", lambda: worth_of_limits(plan)),
-        _or_reason("Who earns the margin", lambda: who_earns_the_margin(plan)),
-        _or_reason("Room to move", lambda: room_to_move(plan, share)),
-        _or_reason("Cash cost", lambda: cash_cost(plan)),
+        _or_reason(plan, "Break-even prices of feeds", lambda: break_even_prices(plan, parcels), many=True),
+        _or_reason(plan, "What the limits are worth", lambda: worth_of_limits(plan), many=True),
+        _or_reason(plan, "Who earns the margin", lambda: who_earns_the_margin(plan)),
+        _or_reason(plan, "Room to move", lambda: room_to_move(plan, share), many=True),
+        _or_reason(plan, "Cash cost", lambda: cash_cost(plan)),
     )
 
 
-def _or_reason(title: str, answer: Callable[[], Answer]) -> Answer:
+def _or_reason(plan: Plan, title: str, answer: Callable[[], Answer], many: bool = False) -> Answer:
+    periods = len(plan.quantities.case.months)
+    if many and periods > MOST_PERIODS:
+        return _left_out(title, f"Left out, as {periods} periods would take many solves; the Python function gives it.")
     try:
         return answer()
     except (CertificateError, NeighbourError, ArithmeticError) as error:
-        empty = Table(title.lower().replace(" ", "_"), title, (Column("reason", "Reason"),))
-        return Answer(empty.name, title, (empty,), (f"This answer could not be proven and is left out: {error}",))
+        return _left_out(title, f"This answer could not be proven and is left out: {error}")
+
+
+def _left_out(title: str, reason: str) -> Answer:
+    empty = Table(title.lower().replace(" ", "_"), title, (Column("reason", "Reason"),))
+    return Answer(empty.name, title, (empty,), (reason,))
