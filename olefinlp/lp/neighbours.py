@@ -8,6 +8,7 @@ A row `margin_kept`, free in the base, lets a question hold the margin and optim
 from __future__ import annotations
 
 import contextlib
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
@@ -18,11 +19,12 @@ from olefinlp.lp.certificate import Bounds, Solved, Terms, certificates, prove, 
 from olefinlp.lp.clash import clashes
 from olefinlp.lp.compile import Floats, Integers, LabelledLp
 from olefinlp.lp.solver import Solver, Status
-from olefinlp.lp.steps import Point
 
 MARGIN_ROW = ("margin_kept",)
 FREE = 1e-9
 """Share of the largest price below which a dual may be what rounding leaves of nothing."""
+NONE = 1e-9
+"""Share of the largest flow below which nothing flows."""
 TOGETHER = 8
 """How many optima are proven at once, where a question allows it."""
 
@@ -194,6 +196,27 @@ def _held(dual: Floats, low: Floats, high: Floats, small: float) -> Bounds:
     return {int(place): (limit, limit) for place, limit in zip(places, limits, strict=True)}
 
 
+@dataclass(frozen=True, slots=True)
+class RatioPoint:
+    """The best margin at a ratio, with the piece of the curve that it is on.
+
+    As long as one basis stays the best, a plan whose ratio row is missed by δ is x + δ d, and it has the
+    ratio r where δ = (r − at) (t + δ turn): t = Σ to, turn = Σ to of d. So the margin is
+    value + slope (r − at) / (1 − turn (r − at)), a hyperbola, exactly.
+    """
+
+    at: float
+    value: float
+    slope: float
+    turn: float
+
+    def along(self, ratio: float) -> float:
+        """The margin at another ratio, should it be on the same piece; infinite past the piece's pole."""
+        way = ratio - self.at
+        left = 1 - self.turn * way
+        return self.value + self.slope * way / left if left > 0 else math.inf
+
+
 class RatioNeighbours:
     """The program with one row more, Σ of − ratio × Σ to = 0, solved for one ratio after another."""
 
@@ -217,13 +240,14 @@ class RatioNeighbours:
         self.basis: object | None = None
         self.solves = 0
 
-    def evaluate(self, ratio: float) -> Point | None:
-        """The best margin at a ratio and its slope, dual × Σ to; None when no plan has that ratio."""
+    def evaluate(self, ratio: float) -> RatioPoint | None:
+        """The best margin at a ratio, its slope dual × Σ to, its piece; None when no plan has that ratio."""
+        highs = self.solver.highs
         for column in self.to:
-            self.solver.highs.changeCoeff(self.row, column, -ratio)
+            highs.changeCoeff(self.row, column, -ratio)
         if self.basis is not None:
-            self.solver.highs.clearSolver()
-            self.solver.highs.setBasis(self.basis)
+            highs.clearSolver()
+            highs.setBasis(self.basis)
         self.solves += 1
         outcome = self.solver.solve()
         value = self.lp.value.copy()
@@ -235,8 +259,18 @@ class RatioNeighbours:
                 return None
             raise NeighbourError(f"a neighbour ended as {outcome.message}")
         if self.basis is None:
-            self.basis = self.solver.highs.getBasis()
+            self.basis = highs.getBasis()
         solution = outcome.solution
         prove(changed, solution)
-        slope = float(solution.row_dual[self.row]) * float(solution.x[self.to].sum())
-        return Point(ratio, solution.objective, slope)
+        made = float(solution.x[self.to].sum())
+        if made <= NONE * float(np.abs(solution.x).max()):
+            return None  # of neither anything is made: that is no ratio
+        return RatioPoint(ratio, solution.objective, float(solution.row_dual[self.row]) * made, self._turn())
+
+    def _turn(self) -> float:
+        """Change of Σ to per unit by which the ratio row is missed, in the basis at hand; 0.0 where there is none."""
+        there, basic = self.solver.highs.getBasicVariables()
+        marks = np.isin(np.asarray(basic), self.to).astype(float)
+        solved, weights = self.solver.highs.getBasisTransposeSolve(marks)
+        ok = highspy.HighsStatus.kOk
+        return float(np.asarray(weights)[self.row]) if there == ok and solved == ok else 0.0
