@@ -28,6 +28,7 @@ from olefinlp.cli_support import (
     planned,
     print_findings,
     read,
+    say_written,
     scenario_path,
     shown_path,
     stop,
@@ -96,6 +97,9 @@ def plan(
     quick: Annotated[bool, typer.Option("--quick", help="The plan and its workbook only, no further answers.")] = False,
     parcels: Annotated[str | None, typer.Option(metavar="KT,KT…", help="Sizes for the value of parcels, kt.")] = None,
     room: Annotated[float, typer.Option(metavar="PERCENT", help="Share of the margin for the room to move.")] = 0.5,
+    all_answers: Annotated[
+        bool, typer.Option("--all-answers", help="Every answer, however many periods; beyond 12 some are left out.")
+    ] = False,
 ) -> None:
     """Make the best plan, prove it, print a summary and write a workbook."""
     import pyomo.core  # noqa: F401  # first: it is three times slower to load after scipy
@@ -115,17 +119,18 @@ def plan(
 
         if len(made.quantities.case.months) > FEW_MONTHS:
             note("solving around the plan for its answers, a few seconds a month; --quick leaves them out")
-        answers = default_answers(made, sizes, share)
-    if json_file == "-":
-        data(plan_json(made, answers))
-    else:
-        typer.echo(summary(made, answers))
+        answers = default_answers(made, sizes, share, every=all_answers)
     targets: list[tuple[Path, Writer]] = [(output or Path(f"{path.stem}_plan.xlsx"), write_workbook)]
     if json_file and json_file != "-":
         targets.append((Path(json_file), write_json))
     if csv_folder:
         targets.append((csv_folder, write_csv))
-    write_all(made, answers, targets)
+    written, failed = write_all(made, answers, targets)
+    if json_file == "-":
+        data(plan_json(made, answers))
+    else:
+        typer.echo(summary(made, answers))
+    say_written(written, failed)
 
 
 @app.command()

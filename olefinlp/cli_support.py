@@ -21,8 +21,11 @@ EXIT_OUTPUT, EXIT_INPUT, EXIT_FAILED = 1, 2, 6
 NOT_PROVEN = "hint: this is a fault of the tool or of extreme numbers, not a plan; please report it"
 
 
-def write_all(made: Plan, answers: tuple[Answer, ...], targets: list[tuple[Path, Writer]]) -> None:
-    """Write each output; one that cannot be written does not hold back the others."""
+def write_all(made: Plan, answers: tuple[Answer, ...], targets: list[tuple[Path, Writer]]) -> tuple[list[str], list[str]]:
+    """Write each output: what was written, and why the rest was not; one failure does not hold back the others.
+
+    It is done before anything is printed, so that a reader who closes a pipe early loses no file.
+    """
     from olefinlp.outputs.files import OutputError
 
     written, failed = [], []
@@ -32,6 +35,11 @@ def write_all(made: Plan, answers: tuple[Answer, ...], targets: list[tuple[Path,
             written.append(shown_path(target))
         except OutputError as error:
             failed.append(str(error))
+    return written, failed
+
+
+def say_written(written: list[str], failed: list[str]) -> None:
+    """Name the files that were written; ends the command when some were not."""
     if written:
         note(f"\nwritten: {', '.join(written)}")
     if failed:
@@ -121,13 +129,17 @@ def planned(path: Path, price_case: str | None, json_file: str | None) -> Plan:
     from olefinlp.lp.certificate import CertificateError
     from olefinlp.lp.solver import EXIT_CODES
 
+    warnings: tuple[Finding, ...] = ()
     try:
         scenario = read_scenario(path)
-        return make_plan(scenario.with_(price_case=price_case) if price_case else scenario)
+        scenario = scenario.with_(price_case=price_case) if price_case else scenario
+        warnings = scenario.warnings
+        return make_plan(scenario)
     except InputError as error:
         failure_json(json_file, _input_record(error))
         stop_on_input(error)
     except NoPlan as error:
+        print_findings(warnings)  # they may well name the cause
         failure_json(json_file, _no_plan_record(error))
         stop(str(error), EXIT_CODES[error.status])
     except (CertificateError, BalanceError) as error:

@@ -452,7 +452,7 @@ def test_a_value_for_something_that_is_no_month(path, unit):
     slip = {"2031-3": f"30 {unit}", "other_months": f"20 {unit}"}
     assert found(MONTHS, {path: slip}) == [f"{path}\n  `2031-3` is not a month\nhint: did you mean `2031-03`?"]
     later = {"2032-03": f"30 {unit}", "other_months": f"20 {unit}"}
-    assert found(MONTHS, {path: later}) == []
+    assert found(MONTHS, {path: later}) == [f"{path}\n  warning: has no effect: 2032-03 is not in this scenario"]
 
 
 # ---------------------------------------------------------------------------------- prices

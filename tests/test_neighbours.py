@@ -18,7 +18,7 @@ from olefinlp.answers.room import room_to_move
 from olefinlp.answers.worth import worth_of_limits
 from olefinlp.lp import neighbours as neighbours_module
 from olefinlp.lp.certificate import CertificateError
-from olefinlp.lp.compile import LabelledLp
+from olefinlp.lp.compile import Floats, LabelledLp
 from olefinlp.lp.neighbours import MARGIN_ROW, NeighbourError, Neighbours, Optimum
 from olefinlp.lp.solver import Status, solve
 
@@ -140,8 +140,7 @@ def test_order_changes_nothing(march: Plan, questions: list[Question]) -> None:
 
 def test_proving_together_changes_nothing(march: Plan, questions: list[Question]) -> None:
     around = Neighbours(march.lp)
-    with around.proven_together():
-        together = [around.solve(**question) for question in questions[:60]]
+    together = around.together(lambda: [around.solve(**question) for question in questions[:60]])
     assert all(same(around.solve(**q), found) for q, found in zip(questions[:60], together, strict=True))
 
 
@@ -231,20 +230,24 @@ def test_a_base_without_an_optimum_is_an_error(lp: LabelledLp) -> None:
 
 
 def test_every_optimum_is_proven(monkeypatch: pytest.MonkeyPatch, march: Plan, questions: list[Question]) -> None:
-    """One certificate each, alone or together; all of them by the end of `proven_together`."""
+    """One certificate each, alone or together; all of them before the answer is given."""
     around, made, there = Neighbours(march.lp), [], neighbours_module.certificates
     monkeypatch.setattr(neighbours_module, "certificates", lambda lp, solved: made.append(len(solved)) or there(lp, solved))
     for question in questions[:5]:
         around.solve(**question)
     assert made == [1] * 5
     made.clear()
-    with around.proven_together():
+
+    def within() -> int:
         for question in questions[:37]:
             around.solve(**question)
-        with around.proven_together():  # within another nothing ends early
-            around.solve(**questions[0])
+        around.together(lambda: around.solve(**questions[0]))  # within another nothing ends early
+        return sum(made)
+
+    assert around.together(within) < 38
     assert sum(made) == 38
-    assert around.solve(**questions[0]) is not None
+    assert max(made) > 1
+    around.solve(**questions[0])
     assert sum(made) == 39
 
 
@@ -253,27 +256,59 @@ def test_the_certificate_is_of_the_asked_program(monkeypatch: pytest.MonkeyPatch
     around = Neighbours(small())
     stuck = (around.base.x, around.base.row_dual)
     monkeypatch.setattr(around, "_restarted", lambda: stuck)
+    monkeypatch.setattr(around, "_outcome", lambda: stuck)
     assert around.solve() is not None
     for question in ({"cost": np.array([0.0, 2.0])}, {"rows": {0: (-INF, 3.5)}}, {"columns": {1: (2.0, 2.0)}}):
         with pytest.raises(CertificateError, match="not a proven optimum"):
             around.solve(**question)
+        with pytest.raises(CertificateError, match="not a proven optimum"):
+            around.together(lambda question=question: around.solve(**question))
+
+
+def test_a_warm_start_slightly_off_is_solved_again_from_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
+    """At once where each is proven at once; where they are proven together the whole question is asked again."""
+    around = Neighbours(small())
+    right, restarted = around.solve(rows={0: (-INF, 6.0)}), around._restarted
+
+    def off() -> tuple[Floats, Floats] | None:
+        found = restarted()
+        assert found is not None
+        return found[0] * (1 + 1e-4), found[1]
+
+    monkeypatch.setattr(around, "_restarted", off)
+    asked: list[int] = []
+
+    def question() -> Optimum | None:
+        asked.append(1)
+        return around.solve(rows={0: (-INF, 6.0)})
+
+    for found in (question(), around.together(question)):
+        assert found is not None and right is not None
+        assert found.x == pytest.approx(right.x)
+    assert len(asked) == 3
 
 
 def test_an_unproven_optimum_is_an_error(wrong_certificates: list[int]) -> None:
+    """The warm one and the one from nothing, each by itself; together first, then once more each by itself."""
     around = Neighbours(small())
     with pytest.raises(CertificateError):
         around.solve()
-    with pytest.raises(CertificateError), around.proven_together():
-        assert around.solve() is not None  # not proven yet; the end is
     assert wrong_certificates == [1, 1]
+    with pytest.raises(CertificateError):
+        around.together(lambda: [around.solve(), around.solve()])
+    assert wrong_certificates == [1, 1, 2, 1, 1]
 
 
 def test_an_error_within_leaves_nothing_waiting(wrong_certificates: list[int]) -> None:
     """What was asked before an error of its own is given up, and the next question is proven at once again."""
     around = Neighbours(small())
-    with pytest.raises(KeyError), around.proven_together():
+
+    def broken() -> None:
         around.solve()
         raise KeyError
+
+    with pytest.raises(KeyError):
+        around.together(broken)
     assert wrong_certificates == []
     with pytest.raises(CertificateError):
         around.solve()

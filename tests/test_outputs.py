@@ -117,7 +117,8 @@ def test_csv_files_equal_the_tables(every_plan: Plan, tmp_path: Path) -> None:
     for path, table in zip(written, every_plan.tables(), strict=True):
         with path.open(encoding="utf-8", newline="") as file:
             header, *lines = list(csv.reader(file))
-        assert header == [f"{c.key} [{c.unit}]" if c.unit else c.key for c in table.columns]
+        units = ["fraction" if c.kind == "share" else c.unit for c in table.columns]  # per cent only where people read
+        assert header == [f"{c.key} [{unit}]" if unit else c.key for c, unit in zip(table.columns, units, strict=True)]
         assert len(lines) == len(table)
         for line, row in zip(lines, table.rows, strict=True):
             for cell, column in zip(line, table.columns, strict=True):

@@ -626,3 +626,24 @@ def test_a_side_stream_that_nothing_limits_is_refused(edited):
         f"({line(scenario, '  propylene_sale:')})\n"
         "hint: write a maximum for one of them, or hours or capacities that they use"
     ]
+
+
+def test_the_same_outage_or_factor_twice():
+    """Outages add up and factors multiply: the same line again is a slip, another of the same month is not."""
+    outage = {"month": "2031-03", "group": "gas_furnaces", "hours": "24 h", "reason": "inspection"}
+    (message,) = found(MARCH, {"outages": [outage, outage]})
+    assert message.startswith("outages.2\n  is written twice, first in line ")
+    assert found(MARCH, {"outages": [outage, {**outage, "reason": "another furnace"}]}) == []
+    factor = {"month": "2031-03", "unit": "c2_splitter", "factor": 0.9, "reason": "fouled"}
+    (message,) = found(MARCH, {"unit_factors": [factor, factor]})
+    assert message.startswith("unit_factors.2\n  is written twice, first in line ")
+
+
+def test_a_stock_at_the_end_worth_far_more_than_its_feed():
+    tank = {"opening": "6 kt", "min": "0 kt", "max": "22 kt", "holding": "0.35 USD/t/month"}
+    (message,) = found(MARCH, {"stocks.condensate": {**tank, "end": {"value": "5000 USD/t"}}})
+    assert message == (
+        "stocks.condensate.end.value\n  warning: 5,000 USD/t at the end, while condensate costs 508.7 to 508.7\n"
+        "hint: is the unit right?"
+    )
+    assert found(MARCH, {"stocks.condensate": {**tank, "end": {"value": "505 USD/t"}}}) == []

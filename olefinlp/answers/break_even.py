@@ -153,11 +153,9 @@ def break_even_prices(plan: Plan, parcels: Sequence[float] | None = None) -> Ans
     size = sum(abs(line.amount) for line in plan.lines)
     rows: list[Record] = []
     parcel_rows: list[Record] = []
-    with plan.neighbours.proven_together():
-        for offer in offers(plan):
-            value = Value(plan.neighbours, offer, plan.quantities.case.sources[offer.source].tiers)
-            rows.append(_break_even(offer, value, size))
-            parcel_rows += _parcels(offer, value, parcels)
+    for row, own in plan.neighbours.together(lambda: [_of_offer(plan, offer, size, parcels) for offer in offers(plan)]):
+        rows.append(row)
+        parcel_rows += own
     note = (
         "All else re-optimised, other prices held. A worth below the price of a feed that is bought shows a contract that binds."
     )
@@ -205,6 +203,11 @@ def _parcel_columns(currency: str) -> tuple[Column, ...]:
         Column("trade_unit", "Trade unit"),
         Column("value_trade", "Worth on average", "trade unit", "price"),
     )
+
+
+def _of_offer(plan: Plan, offer: Offer, size: float, parcels: Sequence[float] | None) -> tuple[Record, list[Record]]:
+    value = Value(plan.neighbours, offer, plan.quantities.case.sources[offer.source].tiers)
+    return _break_even(offer, value, size), _parcels(offer, value, parcels)
 
 
 def _break_even(offer: Offer, value: Value, size: float) -> Record:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import functools
 import math
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -63,7 +63,6 @@ def step_curve(plan: Plan, item: str, low: float | None = None, high: float | No
     which the margin has no end.
     """
     axis = _axis(plan, item, month)
-    axis = replace(axis, evaluate=functools.cache(axis.evaluate))  # an end is looked at twice
     span = PRICE_SPAN if axis.is_price else LIMIT_SPAN
     size = abs(axis.today) or 1.0
     start = max((axis.today - span * size if low is None else low) * axis.factor, axis.low)
@@ -71,10 +70,13 @@ def step_curve(plan: Plan, item: str, low: float | None = None, high: float | No
     if not start < stop:
         raise ValueError(f"the range {start / axis.factor:g} to {stop / axis.factor:g} {axis.unit} is empty")
     money = sum(abs(line.amount) for line in plan.lines)
+
+    def traced() -> list[Step]:
+        evaluate = functools.cache(axis.evaluate)  # an end is looked at twice
+        return trace(evaluate, *_possible(axis, evaluate, start, stop), money)
+
     try:
-        with plan.neighbours.proven_together():
-            start, stop = _possible(axis, start, stop)
-            steps = trace(axis.evaluate, start, stop, money)
+        steps = plan.neighbours.together(traced)
     except NeighbourError as error:
         text = f"between {start / axis.factor:g} and {stop / axis.factor:g} {axis.unit} the margin has no end: ask for less"
         raise ValueError(text) from error
@@ -170,6 +172,8 @@ def _price_axis(plan: Plan, item: str, months: tuple[str, ...]) -> Axis:
     scale = 1000.0 if price.unit_used == case.currency else 1.0
     low, high = _between_steps(case, item, months)
     note = "All months move by the same amount. " if len(months) > 1 else ""
+    if any(data.take_or_pay and f"{data.kind}.{source}" == item for source, data in case.sources.items()):
+        note += "What is paid for and not taken is counted with the share of the price that it pays. "
     return Axis(item, today / factor, unit, factor, evaluate, True, quantity, scale, low, high, note)
 
 
@@ -244,24 +248,24 @@ def _there(neighbours: Neighbours, limit: Limit) -> bool:
     return (f"{limit.family}_limit", *limit.key) in neighbours.lp.row_at
 
 
-def _possible(axis: Axis, start: float, stop: float) -> tuple[float, float]:
+def _possible(axis: Axis, evaluate: Evaluate, start: float, stop: float) -> tuple[float, float]:
     """The part of the range that has a plan, found by halving from today's value; prices forbid none."""
     if axis.is_price:
         return start, stop
-    there = [axis.evaluate(end) is not None for end in (start, stop)]
+    there = [evaluate(end) is not None for end in (start, stop)]
     if all(there):
         return start, stop
     inside = min(max(axis.today * axis.factor, start), stop)
-    if axis.evaluate(inside) is None:
+    if evaluate(inside) is None:
         raise ValueError("no plan is possible anywhere near today's value in this range")
-    return start if there[0] else _edge(axis, inside, start), stop if there[1] else _edge(axis, inside, stop)
+    return start if there[0] else _edge(evaluate, inside, start), stop if there[1] else _edge(evaluate, inside, stop)
 
 
-def _edge(axis: Axis, good: float, bad: float) -> float:
+def _edge(evaluate: Evaluate, good: float, bad: float) -> float:
     """The last value with a plan on the way from one that has to one that has not."""
     for _ in range(40):
         middle = (good + bad) / 2
-        good, bad = (middle, bad) if axis.evaluate(middle) is not None else (good, middle)
+        good, bad = (middle, bad) if evaluate(middle) is not None else (good, middle)
     return good
 
 
@@ -289,10 +293,9 @@ def _answer(plan: Plan, axis: Axis, steps: list[Step]) -> Answer:
         }
         for step in steps
     ]
-    note = (
-        axis.note
-        + "Exact: every step is where the plan changes. Other prices and limits are held. At a step the value is not one number."
-    )
+    both = "Below zero it is bought, above it is sold. " if any(row["level"] < 0 for row in rows) else ""
+    note = f"{axis.note}{both}Exact: every step is where the plan changes. Other prices and limits are held. "
+    note += "At a step the value is not one number."
     table = Table("curve", f"Steps of {axis.item}", columns, rows, note)
     chart = Chart(
         "steps", f"{name} against {axis.item}", "low", "high", "level", f"{axis.unit}", f"{axis.slope_unit}", axis.today

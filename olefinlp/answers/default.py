@@ -22,18 +22,20 @@ if TYPE_CHECKING:
 MOST_PERIODS = 12
 
 
-def default_answers(plan: Plan, parcels: Sequence[float] | None = None, share: float = SHARE) -> tuple[Answer, ...]:
+def default_answers(
+    plan: Plan, parcels: Sequence[float] | None = None, share: float = SHARE, every: bool = False
+) -> tuple[Answer, ...]:
     """Break-evens, worth of limits, who earns the margin, room to move, cash cost.
 
     Under 400 solves for a month; those that solve once or more a decision are left out, and say so,
-    where there are more than `MOST_PERIODS` periods. An answer that cannot be proven says so in
+    where there are more than `MOST_PERIODS` periods, unless `every` is asked for. An answer that cannot be proven says so in
     place of its numbers; the plan stands.
     """
     return (
-        _or_reason(plan, "Break-even prices of feeds", lambda: break_even_prices(plan, parcels), many=True),
-        _or_reason(plan, "What the limits are worth", lambda: worth_of_limits(plan), many=True),
+        _or_reason(plan, "Break-even prices of feeds", lambda: break_even_prices(plan, parcels), many=not every),
+        _or_reason(plan, "What the limits are worth", lambda: worth_of_limits(plan), many=not every),
         _or_reason(plan, "Who earns the margin", lambda: who_earns_the_margin(plan)),
-        _or_reason(plan, "Room to move", lambda: room_to_move(plan, share), many=True),
+        _or_reason(plan, "Room to move", lambda: room_to_move(plan, share), many=not every),
         _or_reason(plan, "Cash cost", lambda: cash_cost(plan)),
     )
 
@@ -41,7 +43,7 @@ def default_answers(plan: Plan, parcels: Sequence[float] | None = None, share: f
 def _or_reason(plan: Plan, title: str, answer: Callable[[], Answer], many: bool = False) -> Answer:
     periods = len(plan.quantities.case.months)
     if many and periods > MOST_PERIODS:
-        return _left_out(title, f"Left out, as {periods} periods would take many solves; the Python function gives it.")
+        return _left_out(title, f"Left out, as {periods} periods would take many solves; --all-answers gives it.")
     try:
         return answer()
     except (CertificateError, NeighbourError, ArithmeticError) as error:

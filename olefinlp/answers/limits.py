@@ -27,7 +27,7 @@ def limits_table(q: Quantities) -> Table:
         Column("unit", "Unit"),
         Column("measure", "Measured as"),
         Column("state", "State"),
-        Column("worth", "Worth of one more unit", kind="price"),
+        Column("worth", "Worth of relaxing it by one unit", kind="price"),
         Column("rate", "Rate d(margin)/d(limit)", kind="price"),
         Column("worth_unit", "Worth and rate unit"),
         Column("place", "Written in"),

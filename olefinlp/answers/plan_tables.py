@@ -250,7 +250,7 @@ def recovery_table(q: Quantities) -> Table:
         Column("rate_unit", "Unit"),
         Column("measure", "Measured as"),
         Column("share", "Loaded", "%", "share"),
-        Column("worth", "Worth of one more unit", kind="price"),
+        Column("worth", "Worth of relaxing it by one unit", kind="price"),
         Column("worth_unit", "Worth unit"),
         Column("reason", "Factor"),
     )

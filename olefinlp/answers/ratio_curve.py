@@ -275,7 +275,8 @@ def _sentences(
         share = f"{money_words(FLAT * abs(best.value), currency)} ({100 * FLAT:g} %)"
         if low <= high:
             first += f"; any ratio from {low:.{decimals}f} to {high:.{decimals}f} costs less than {share}"
-    ends = [f"at {at:.{decimals}f} {money_words(best.value - value, currency)}" for at, value in (shown[0], shown[-1])]
+    losses = [(at, loss if (loss := best.value - value) > SAME * abs(best.value) else 0.0) for at, value in (shown[0], shown[-1])]
+    ends = [f"at {at:.{decimals}f} {money_words(loss, currency)}" for at, loss in losses]
     second = f"Given up at the ends of what was looked at: {' and '.join(ends)}."
     third = f"Straight lines between the points shown miss by up to {money_words(miss, currency)}."
     return f"{first}.", second, third

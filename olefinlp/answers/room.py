@@ -66,8 +66,7 @@ def room_to_move(plan: Plan, share: float = SHARE) -> Answer:
         raise ValueError(f"a share of the margin is between 0 and 1, not {share:g}")
     neighbours = plan.neighbours
     alone = neighbours.only_one()
-    with neighbours.proven_together():
-        rows = [_row(plan, neighbours, decision, share, alone) for decision in decisions(plan)]
+    rows = neighbours.together(lambda: [_row(plan, neighbours, decision, share, alone) for decision in decisions(plan)])
     money = share * abs(plan.solution.objective)
     columns = (
         Column("month", "Month"),

@@ -36,12 +36,12 @@ def worth_of_limits(plan: Plan, reach: float = REACH) -> Answer:
     """
     q = plan.quantities
     size = sum(abs(line.amount) for line in plan.lines)
-    rows = []
-    with plan.neighbours.proven_together():
-        for limit in q.case.limits.values():
-            record = limit_record(q, limit)
-            if record["state"] in ("at maximum", "at minimum", "fixed"):
-                rows.append(_worth(plan, limit, record, reach, size))
+    reached = [
+        (limit, record)
+        for limit in q.case.limits.values()
+        if (record := limit_record(q, limit))["state"] in ("at maximum", "at minimum", "fixed")
+    ]
+    rows = plan.neighbours.together(lambda: [_worth(plan, limit, record, reach, size) for limit, record in reached])
     rows = [row for row in rows if row["worth_loosened"] or row["worth_tightened"]]
     columns = (
         Column("month", "Month"),

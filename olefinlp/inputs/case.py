@@ -293,6 +293,8 @@ class Reader:
                 self.findings.error(
                     place, path_text(path), f"`{month}` is not a month", near_name(month, [*months, "other_months"])
                 )
+            elif month not in months:
+                self.findings.warn(place, path_text(path), f"has no effect: {month} is not in this scenario")
         if value is None:
             self.findings.error(place, path_text(path), f"has no value for {period.name}", "add it, or `other_months:`")
         return value

@@ -63,7 +63,9 @@ class FurnaceGroup(FileModel):
     kind: Literal["thermal", "catalytic", "other"]
     yields: Name = Field(description="which yields table the group uses")
     fired_with: Name | None = Field(None, description="utility that carries its fired heat")
-    min_load: OneQuantity | None = Field(None, description="smallest load of a furnace in use, %")
+    min_load: OneQuantity | None = Field(
+        None, description="smallest load of a furnace in use, %; the linear plan does not hold it"
+    )
     unplanned_loss: OneQuantity = Field(description="share of the hours lost unplanned, %")
     source: Text
 

@@ -183,6 +183,8 @@ class PriceBook:
             if month not in months and not re.fullmatch(MONTH, month):
                 hint = near_name(month, [*months, "other_months"])
                 self.findings.error(self._place(item), item.item, f"`{month}` is not a month", hint)
+            elif month not in months:
+                self.findings.warn(self._place(item), item.item, f"has no effect: {month} is not in this scenario")
 
     def _from_row(self, item: PriceItem, row: Row) -> _Written | None:
         case = str(self.scenario.file.price_case)

@@ -29,6 +29,7 @@ def check_case(case: Case, findings: Findings) -> None:
         check_takes_fit,
         check_opening_stocks,
         check_end_stocks,
+        check_end_values,
         check_cuts_leave,
         check_unbounded,
     ):
@@ -211,6 +212,18 @@ def _made_from(case: Case, month: str) -> Iterator[dict[str, float]]:
     for label, source in case.sources.items():
         if source.kind == "side_streams" and high_of(case, "purchase", label, month) != 0:
             yield case.compositions[source.feed]
+
+
+def check_end_values(case: Case, findings: Findings) -> None:
+    """A stock at the end is not worth far more, or less, than the feed costs: the margin would be made of it."""
+    for item, stock in case.stocks.items():
+        tiers = [(s.label, k) for s in case.sources.values() if s.feed == item for k in s.tiers]
+        prices = [case.prices[case.purchase_item(label, k), case.months[-1]].value for label, k in tiers]
+        if not stock.end_value or not prices or min(prices) / 2 <= stock.end_value <= 2 * max(prices):
+            continue
+        path = ("stocks", item, "end", "value")
+        text = f"{stock.end_value:,.6g} {case.currency}/t at the end, while {item} costs {min(prices):,.4g} to {max(prices):,.4g}"
+        findings.warn(case.scenario.document.place(path), ".".join(path), text, "is the unit right?")
 
 
 def check_cuts_leave(case: Case, findings: Findings) -> None:

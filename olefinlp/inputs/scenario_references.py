@@ -44,6 +44,7 @@ def check_references(scenario: Scenario, findings: Findings) -> None:
         check_costs,
         check_unit_factors,
         check_outages,
+        check_written_once,
         check_stocks,
         check_limits,
     ):
@@ -189,6 +190,17 @@ def check_outages(scenario: Scenario, findings: Findings) -> None:
         if written.hours.number < 0:
             _error(scenario, findings, (*path, "hours"), f"`{written.hours}` is below zero")
         _check_month(scenario, findings, path, written)
+
+
+def check_written_once(scenario: Scenario, findings: Findings) -> None:
+    """Outages of a group add up and factors on a unit multiply; the same line twice is a slip."""
+    for kind in ("outages", "unit_factors"):
+        seen: dict[object, int] = {}
+        for index, written in enumerate(getattr(scenario.file, kind)):
+            first = seen.setdefault(written, index)
+            if first != index:
+                line = scenario.document.place((kind, first)).line
+                _error(scenario, findings, (kind, index), f"is written twice, first in line {line}")
 
 
 def _check_month(scenario: Scenario, findings: Findings, path: Path_, written: Outage | UnitFactor) -> None:

@@ -7,24 +7,27 @@ A row `margin_kept`, free in the base, lets a question hold the margin and optim
 
 from __future__ import annotations
 
-import contextlib
 import math
-from collections.abc import Iterator
+from collections.abc import Callable
 from dataclasses import dataclass, replace
+from typing import TypeVar
 
 import highspy
 import numpy as np
 
-from olefinlp.lp.certificate import Bounds, Solved, Terms, certificates, prove, proven, terms_of
+from olefinlp.lp.certificate import Bounds, CertificateError, Solved, Terms, certificates, certify, prove, proven, terms_of
 from olefinlp.lp.clash import clashes
 from olefinlp.lp.compile import Floats, Integers, LabelledLp
-from olefinlp.lp.solver import Solver, Status
+from olefinlp.lp.solver import Outcome, Solver, Status
 
 MARGIN_ROW = ("margin_kept",)
 FREE = 1e-9
 """Share of the largest price below which a dual may be what rounding leaves of nothing."""
+Answer = TypeVar("Answer")
 NONE = 1e-9
 """Share of the largest flow below which nothing flows."""
+STRATEGIES = (0, 1, 4)
+"""Simplex strategies of the solver: its choice, dual, primal."""
 TOGETHER = 8
 """How many optima are proven at once, where a question allows it."""
 
@@ -76,7 +79,7 @@ class Neighbours:
         self.lp = with_margin_row(lp)
         self.margin_row = len(lp.rows)
         self.solver = Solver(self.lp)
-        self.solver.highs.setOptionValue("simplex_strategy", 0)
+        self.solver.highs.setOptionValue("simplex_strategy", STRATEGIES[0])
         outcome = self.solver.solve()
         if outcome.solution is None:
             raise NeighbourError(f"the base has no optimum: {outcome.message}")
@@ -87,21 +90,24 @@ class Neighbours:
         self.solves = 1
         self._waiting: list[Solved] | None = None
 
-    @contextlib.contextmanager
-    def proven_together(self) -> Iterator[None]:
-        """Within it, optima are proven some at a time, which is quicker, and all of them by its end.
+    def together(self, question: Callable[[], Answer]) -> Answer:
+        """The answer to a question whose optima are proven some at a time, which is quicker, and all before it is given.
 
-        Raises `CertificateError` at its end, or before, when one of them cannot be proven.
+        Should one of them not be proven, the question is asked again and each is proven at once.
+        Raises `CertificateError` when even then one cannot be proven.
         """
         if self._waiting is not None:
-            yield
-            return
+            return question()
         self._waiting = []
         try:
-            yield
+            answer = question()
             self._prove_waiting()
+            return answer
+        except CertificateError:
+            pass
         finally:
             self._waiting = None
+        return question()
 
     def _prove_waiting(self) -> None:
         if self._waiting:
@@ -109,13 +115,14 @@ class Neighbours:
                 proven(certificate)
             self._waiting.clear()
 
-    def _prove(self, solved: Solved) -> None:
+    def _holds(self, solved: Solved) -> bool:
+        """Whether an optimum is proven, or will be before the question is answered."""
         if self._waiting is None:
-            proven(certificates(self.lp, [solved])[0])
-            return
+            return certificates(self.lp, [solved])[0].holds
         self._waiting.append(solved)
         if len(self._waiting) >= TOGETHER:
             self._prove_waiting()
+        return True
 
     @property
     def small(self) -> float:
@@ -156,9 +163,12 @@ class Neighbours:
         try:
             self._change(terms, dearer, rows or {}, columns or {})
             found = self._restarted()
+            if found is not None and not self._holds(Solved(terms, *found)):
+                found = self._outcome()  # a warm start can end slightly off: once more from nothing
+                if found is not None:
+                    proven(certificates(self.lp, [Solved(terms, *found)])[0])
             if found is None:
                 return None
-            self._prove(Solved(terms, *found))
             return Optimum(self.lp, terms.cost, *found)
         finally:
             self._change(self.terms, dearer, rows or {}, columns or {})
@@ -172,7 +182,11 @@ class Neighbours:
         if highs.run() == highspy.HighsStatus.kOk and highs.getModelStatus() == highspy.HighsModelStatus.kOptimal:
             found = highs.getSolution()
             return np.array(found.col_value) / scale, np.array(found.row_dual)
-        outcome = self.solver.solve()
+        return self._outcome()
+
+    def _outcome(self) -> tuple[Floats, Floats] | None:
+        """Values and duals as the solver's wrapper finds them from nothing."""
+        outcome = _from_nothing(self.solver)
         if outcome.status is Status.INFEASIBLE:
             return None
         if outcome.solution is None:
@@ -188,6 +202,19 @@ class Neighbours:
             highs.changeRowBounds(row, terms.low[row] * scale, terms.high[row] * scale)
         for column in columns:
             highs.changeColBounds(column, terms.low[first + column] * scale, terms.high[first + column] * scale)
+
+
+def _from_nothing(solver: Solver) -> Outcome:
+    """Solved without a basis; another way is tried where the solver comes to no verdict."""
+    outcome = Outcome(Status.FAILED, "not solved")
+    for strategy in STRATEGIES:
+        solver.highs.setOptionValue("simplex_strategy", strategy)
+        solver.highs.clearSolver()
+        outcome = solver.solve()
+        if outcome.status in (Status.OPTIMAL, Status.INFEASIBLE, Status.UNBOUNDED):
+            break
+    solver.highs.setOptionValue("simplex_strategy", STRATEGIES[0])
+    return outcome
 
 
 def _held(dual: Floats, low: Floats, high: Floats, small: float) -> Bounds:
@@ -236,7 +263,7 @@ class RatioNeighbours:
             row_at={**lp.row_at, label: row},
         )
         self.solver = Solver(self.lp)
-        self.solver.highs.setOptionValue("simplex_strategy", 0)
+        self.solver.highs.setOptionValue("simplex_strategy", STRATEGIES[0])
         self.basis: object | None = None
         self.solves = 0
 
@@ -245,14 +272,16 @@ class RatioNeighbours:
         highs = self.solver.highs
         for column in self.to:
             highs.changeCoeff(self.row, column, -ratio)
-        if self.basis is not None:
-            highs.clearSolver()
-            highs.setBasis(self.basis)
-        self.solves += 1
-        outcome = self.solver.solve()
         value = self.lp.value.copy()
         value[len(value) - len(self.to) :] = -ratio
         changed = replace(self.lp, value=value)
+        highs.clearSolver()
+        if self.basis is not None:
+            highs.setBasis(self.basis)
+        self.solves += 1
+        outcome = self.solver.solve()
+        if outcome.solution is None or not certify(changed, outcome.solution).holds:
+            outcome = _from_nothing(self.solver)  # a warm start can end slightly off
         if outcome.solution is None:
             # far from what a plant can do a solver may not know: then the elastic copy decides
             if outcome.status is Status.INFEASIBLE or clashes(changed):

@@ -12,7 +12,7 @@ from typing import Any
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.plan import Plan
-from olefinlp.answers.tables import Table
+from olefinlp.answers.tables import Column, Table
 from olefinlp.outputs.files import OutputError, write_text
 
 Answers = tuple[Answer, ...]
@@ -46,7 +46,7 @@ def plan_record(plan: Plan, answers: Answers = ()) -> dict[str, Any]:
         "margin": plan.margin,
         "fixed_cost": plan.fixed_cost(),
         "months": months,
-        "units": {t.name: {c.key: c.unit for c in t.columns if c.unit} for t in tables},
+        "units": {t.name: {c.key: _unit(c) for c in t.columns if _unit(c)} for t in tables},
         "warnings": [str(w) for w in plan.warnings],
         "answers": [{"name": a.name, "title": a.title, "sentences": list(a.sentences), "note": a.note} for a in answers],
     }
@@ -56,6 +56,11 @@ def plan_record(plan: Plan, answers: Answers = ()) -> dict[str, Any]:
 def _tables(plan: Plan, answers: Answers) -> list[Table]:
     """The plan's tables, then those of its answers."""
     return [*plan.tables(), *(table for answer in answers for table in answer.tables)]
+
+
+def _unit(column: Column) -> str:
+    """The unit of the numbers themselves: a share is a fraction of one, which only people read in per cent."""
+    return "fraction" if column.kind == "share" else column.unit
 
 
 def _plain(row: dict[str, Any]) -> dict[str, Any]:
@@ -84,7 +89,7 @@ def table_csv(table: Table) -> str:
     """A table as csv text: one header row of keys (with units in brackets), unrounded numbers."""
     text = io.StringIO(newline="")
     writer = csv.writer(text, lineterminator="\n")
-    writer.writerow([f"{c.key} [{c.unit}]" if c.unit else c.key for c in table.columns])
+    writer.writerow([f"{c.key} [{_unit(c)}]" if _unit(c) else c.key for c in table.columns])
     for row in table.rows:
         writer.writerow([_value(row[c.key]) for c in table.columns])
     return text.getvalue()

@@ -222,7 +222,7 @@ def _limits(plan: Plan) -> list[str]:
 
 
 def _limits_of_one(found: list[Record]) -> list[str]:
-    rows = [["Limits that bind", "", "one more unit is worth", ""]]
+    rows = [["Limits that bind", "", "relaxing it by one unit is worth", ""]]
     for row in found:
         amount = row["minimum"] if row["state"] == "at minimum" else row["maximum"]
         side = {"at minimum": "at least", "at maximum": "at most"}.get(row["state"], "fixed at")
@@ -245,7 +245,7 @@ def _limits_by_month(plan: Plan, found: list[Record]) -> list[str]:
     for row in found:
         side = "min" if row["state"] == "at minimum" else "max"
         worth.setdefault((row["limit"], side, row["worth_unit"]), {})[row["month"]] = row["worth"]
-    rows = [["Limits that bind: worth of one more unit", *months, ""]]
+    rows = [["Limits that bind: worth of relaxing by one unit", *months, ""]]
     for (limit, side, unit), values in worth.items():
         rows.append([f"{INDENT}{names(limit)} ({side})", *[significant(values.get(m)) for m in months], unit])
     return [line.removeprefix(INDENT) for line in _state_left(rows)]

@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
 
 TOP_LIMITS = 8
-WORTHS = "Limits that bind, and what one more unit is worth"
+WORTHS = "Limits that bind, and what relaxing each by one unit is worth"
 FEED_ROWS, SLATE_ROWS, LOAD_ROWS = 13, 15, 17
 """Rows that a chart takes at least."""
 
