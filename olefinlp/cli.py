@@ -28,6 +28,7 @@ from olefinlp.cli_support import (
     planned,
     print_findings,
     read,
+    refuse_option,
     say_written,
     scenario_path,
     shown_path,
@@ -112,6 +113,8 @@ def plan(
     if scenario is None:
         note(f"no scenario given: planning the invented demo, {shown_path(path)}")
     sizes, share = answer_options(parcels, room, json_file)
+    if output and output.suffix.lower() != ".xlsx" and not output.is_dir():
+        refuse_option(json_file, f"--output {output}: a workbook's name ends in .xlsx")
     made = planned(path, price_case, json_file)
     answers: tuple[Answer, ...] = ()
     if not quick:

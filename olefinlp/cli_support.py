@@ -114,10 +114,23 @@ def read(path: Path, price_case: str | None) -> Scenario:
     from olefinlp.inputs.scenario import read_scenario
 
     try:
-        scenario = read_scenario(path)
-        return scenario.with_(price_case=price_case) if price_case else scenario
+        return in_case(read_scenario(path), price_case, None)
     except InputError as error:
         stop_on_input(error)
+
+
+def in_case(scenario: Scenario, price_case: str | None, json_file: str | None) -> Scenario:
+    """The scenario with the price case asked for on the command line; ends the command when it has none so named."""
+    from olefinlp.inputs.findings import near_name
+
+    if price_case is None:
+        return scenario
+    cases = scenario.price_cases()
+    if not cases:
+        refuse_option(json_file, f"--price-case {price_case}: {shown_path(scenario.path)} has no price table")
+    if price_case not in cases:
+        refuse_option(json_file, f"--price-case {price_case}: no such price case\nhint: {near_name(price_case, cases)}")
+    return scenario.with_(price_case=price_case)
 
 
 def planned(path: Path, price_case: str | None, json_file: str | None) -> Plan:
@@ -131,8 +144,7 @@ def planned(path: Path, price_case: str | None, json_file: str | None) -> Plan:
 
     warnings: tuple[Finding, ...] = ()
     try:
-        scenario = read_scenario(path)
-        scenario = scenario.with_(price_case=price_case) if price_case else scenario
+        scenario = in_case(read_scenario(path), price_case, json_file)
         warnings = scenario.warnings
         return make_plan(scenario)
     except InputError as error:

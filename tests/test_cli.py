@@ -155,7 +155,7 @@ def test_an_unknown_price_case_names_the_near_one(work: Path) -> None:
     """A slip in a name is an input error like any other."""
     done = run("plan", DEMO, "--price-case", "High crud")
     assert done.code == 2
-    assert "`High crud` is not a price case of scenarios/prices/brackwater.csv" in done.err
+    assert "--price-case High crud: no such price case\nhint: did you mean `High crude`?" in done.err
     assert "hint: did you mean `High crude`?" in done.err
     assert not list(work.glob("*.xlsx"))
 

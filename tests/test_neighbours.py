@@ -13,6 +13,7 @@ import pytest
 from plants import dense_lp
 
 from olefinlp.answers.break_even import break_even_prices
+from olefinlp.answers.default import default_answers
 from olefinlp.answers.plan import Plan, make_plan
 from olefinlp.answers.room import room_to_move
 from olefinlp.answers.worth import worth_of_limits
@@ -317,3 +318,10 @@ def test_an_error_within_leaves_nothing_waiting(wrong_certificates: list[int]) -
 def test_a_certificate_that_is_no_number_does_not_hold(march: Plan) -> None:
     for name in ("primal", "dual", "complementarity", "gap"):
         assert not replace(march.certificate, **{name: math.nan}).holds
+
+
+def test_the_default_answers_of_a_month_take_few_solves(march: Plan) -> None:
+    """Under 400, so that no one has to do without them."""
+    plan = make_plan(march.scenario)
+    default_answers(plan)
+    assert 200 < plan.neighbours.solves < 400
