@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import functools
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -27,6 +28,9 @@ QUANTITIES = {"GJ LHV": "TJ LHV", "MWh": "GWh", "t": "kt", "t held": "kt held"}
 """What a price is per → what it prices, as the plan counts it."""
 
 
+CHANGE = "Change of margin per unit"
+
+
 @dataclass(frozen=True)
 class Axis:
     """What a curve runs along: one number as people write it, and what it does to the program.
@@ -46,10 +50,12 @@ class Axis:
     low: float
     high: float
     note: str = ""
+    own: Callable[[float], float] | None = None
+    """For a price that others lean on: the quantity of the item itself at a price."""
 
 
 def step_curve(plan: Plan, item: str, low: float | None = None, high: float | None = None, month: str | None = None) -> Answer:
-    """The exact curve of one price or limit, by tangent intersection; 2n + 1 solves for n steps.
+    """The exact curve of one price or limit, by tangent intersection; 2n + 1 solves for n steps (one a step more where prices lean on it).
 
     `item` is a path as written in the files: `feeds.ethane.contract` or `outlets.x` (price),
     `feeds.ethane.contract.max`, `outlets.x.min`, `recovery_units.x.capacity`,
@@ -174,7 +180,24 @@ def _price_axis(plan: Plan, item: str, months: tuple[str, ...]) -> Axis:
     note = "All months move by the same amount. " if len(months) > 1 else ""
     if any(data.take_or_pay and f"{data.kind}.{source}" == item for source, data in case.sources.items()):
         note += "What is paid for and not taken is counted with the share of the price that it pays. "
-    return Axis(item, today / factor, unit, factor, evaluate, True, quantity, scale, low, high, note)
+    leaning = sorted({name for name, _ in price_derivatives(case, item, months)} - {item})
+    if leaning:
+        note += f"{', '.join(leaning)} move with it: the net quantity counts them at their share. "
+    own = _own_quantity(plan, item, months, direction, today) if leaning else None
+    return Axis(item, today / factor, unit, factor, evaluate, True, quantity, scale, low, high, note, own)
+
+
+def _own_quantity(plan: Plan, item: str, months: tuple[str, ...], direction: Floats, today: float) -> Callable[[float], float]:
+    """What is bought or sold of the item itself when its price, and those that lean on it, move."""
+
+    def own(value: float) -> float:
+        solution = plan.neighbours.solve(cost=plan.lp.cost + (value - today) * direction)
+        if solution is None:
+            return 0.0
+        parts = [plan.price_map[item, month] for month in months if (item, month) in plan.price_map]
+        return abs(sum(float(coefficients @ solution.x[columns]) for columns, coefficients in parts))
+
+    return own
 
 
 def _between_steps(case: Case, item: str, months: tuple[str, ...]) -> tuple[float, float]:
@@ -271,17 +294,18 @@ def _edge(evaluate: Evaluate, good: float, bad: float) -> float:
 
 def _answer(plan: Plan, axis: Axis, steps: list[Step]) -> Answer:
     currency = plan.currency
-    name = "Quantity that it prices" if axis.is_price else "Worth of one more unit"
+    name = ("Net quantity that moves with it" if axis.own else "Quantity that it prices") if axis.is_price else CHANGE
     columns = (
         Column("low", f"From, {axis.unit}", kind="price"),
         Column("high", f"To, {axis.unit}", kind="price"),
         Column("level", name, axis.slope_unit, "quantity"),
+        *((Column("own", "Of the item itself", axis.slope_unit, "quantity"),) if axis.own else ()),
         Column("margin_low", "Margin at the start", f"k{currency}", "money"),
         Column("margin_high", "Margin at the end", f"k{currency}", "money"),
         Column("today", "Today"),
     )
     noise = 1e-9 * max(abs(step.slope) for step in steps)
-    sign = -1 if all(step.slope <= noise for step in steps) else 1  # what is bought, or a minimum, is no negative quantity
+    sign = -1 if axis.is_price and all(step.slope <= noise for step in steps) else 1  # what is bought is no negative quantity
     rows: list[Record] = [
         {
             "low": step.low / axis.factor,
@@ -291,6 +315,7 @@ def _answer(plan: Plan, axis: Axis, steps: list[Step]) -> Answer:
             "margin_high": step.value_high,
             "today": "here" if step.low / axis.factor <= axis.today <= step.high / axis.factor else "",
         }
+        | ({"own": _none_of_noise(plan, axis.own((step.low + step.high) / 2))} if axis.own else {})
         for step in steps
     ]
     both = "Below zero it is bought, above it is sold. " if any(row["level"] < 0 for row in rows) else ""
@@ -303,10 +328,18 @@ def _answer(plan: Plan, axis: Axis, steps: list[Step]) -> Answer:
     return Answer("curve", f"Curve of {axis.item}", (table,), (_sentence(axis, rows),), note, chart)
 
 
+def _none_of_noise(plan: Plan, quantity: float) -> float:
+    return quantity if quantity > 1e-9 * plan.quantities.size else 0.0
+
+
 def _sentence(axis: Axis, rows: list[Record]) -> str:
     here = next((i for i, row in enumerate(rows) if row["today"]), 0)
     row = rows[here]
     what = f"{row['level']:,.4g} {axis.slope_unit}"
+    if axis.own:
+        what = f"{row['own']:,.4g} {axis.slope_unit} of itself, net {row['level']:,.4g} with what leans on it"
+    elif not axis.is_price:
+        what = f"{row['level']:+,.4g} {axis.slope_unit} of margin"
     text = f"{axis.item}: today {axis.today:,.4g} {axis.unit}; between {row['low']:,.4g} and {row['high']:,.4g} it is {what}"
     if here + 1 < len(rows):
         text += f", above that {rows[here + 1]['level']:,.4g}"

@@ -26,8 +26,10 @@ FREE = 1e-9
 Answer = TypeVar("Answer")
 NONE = 1e-9
 """Share of the largest flow below which nothing flows."""
+WARM = 4
+"""Simplex strategy from a basis, primal: with other prices the base's plan is still possible, and most questions change prices."""
 STRATEGIES = (0, 1, 4)
-"""Simplex strategies of the solver: its choice, dual, primal."""
+"""Simplex strategies without a basis: the solver's choice, dual, primal."""
 TOGETHER = 8
 """How many optima are proven at once, where a question allows it."""
 
@@ -79,13 +81,13 @@ class Neighbours:
         self.lp = with_margin_row(lp)
         self.margin_row = len(lp.rows)
         self.solver = Solver(self.lp)
-        self.solver.highs.setOptionValue("simplex_strategy", STRATEGIES[0])
         outcome = self.solver.solve()
         if outcome.solution is None:
             raise NeighbourError(f"the base has no optimum: {outcome.message}")
         self.base = outcome.solution
         prove(self.lp, self.base)
         self.basis = self.solver.highs.getBasis()
+        self.solver.highs.setOptionValue("simplex_strategy", WARM)
         self.terms = terms_of(self.lp)
         self.solves = 1
         self._waiting: list[Solved] | None = None
@@ -207,13 +209,14 @@ class Neighbours:
 def _from_nothing(solver: Solver) -> Outcome:
     """Solved without a basis; another way is tried where the solver comes to no verdict."""
     outcome = Outcome(Status.FAILED, "not solved")
+    _, before = solver.highs.getOptionValue("simplex_strategy")
     for strategy in STRATEGIES:
         solver.highs.setOptionValue("simplex_strategy", strategy)
         solver.highs.clearSolver()
         outcome = solver.solve()
         if outcome.status in (Status.OPTIMAL, Status.INFEASIBLE, Status.UNBOUNDED):
             break
-    solver.highs.setOptionValue("simplex_strategy", STRATEGIES[0])
+    solver.highs.setOptionValue("simplex_strategy", before)
     return outcome
 
 
