@@ -55,7 +55,9 @@ class Axis:
 
 
 def step_curve(plan: Plan, item: str, low: float | None = None, high: float | None = None, month: str | None = None) -> Answer:
-    """The exact curve of one price or limit, by tangent intersection; 2n + 1 solves for n steps (one a step more where prices lean on it).
+    """The exact curve of one price or limit, by tangent intersection.
+
+    2n + 1 solves for n steps, one a step more where other prices lean on it.
 
     `item` is a path as written in the files: `feeds.ethane.contract` or `outlets.x` (price),
     `feeds.ethane.contract.max`, `outlets.x.min`, `recovery_units.x.capacity`,

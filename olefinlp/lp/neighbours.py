@@ -27,7 +27,7 @@ Answer = TypeVar("Answer")
 NONE = 1e-9
 """Share of the largest flow below which nothing flows."""
 WARM = 4
-"""Simplex strategy from a basis, primal: with other prices the base's plan is still possible, and most questions change prices."""
+"""Simplex strategy from a basis, primal: at other prices, which most questions ask for, the base's plan stays possible."""
 STRATEGIES = (0, 1, 4)
 """Simplex strategies without a basis: the solver's choice, dual, primal."""
 TOGETHER = 8

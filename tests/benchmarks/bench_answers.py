@@ -8,7 +8,8 @@ bare      the same sequence sent to one loaded HiGHS: change, restart from the b
           and the values, change back; nothing proven, nothing named, and what is remembered between solves is kept
 primal    the same with the simplex strategy that the answers use
 
-The aim is a ratio of answers to bare of 1.2 or less. Times are those of the process (its work, not its waiting), as medians and as the least.
+The aim is a ratio of answers to bare of 1.2 or less. Times are those of the process
+(its work, not its waiting), as medians and as the least.
 Run it from anywhere: `python tests/benchmarks/bench_answers.py --repetitions 15`.
 """
 
