@@ -216,7 +216,7 @@ def test_sentences(answers: dict[str, Answer]) -> None:
     )
     assert (
         "2031-03: light_naphtha contract: buy the planned 20.0 kt up to 93.9 USD/bbl (today 57.0), as 40 % is paid even if it "
-        "is not taken; above that the next step down is to 19.1 kt." in march
+        "is not taken; each tonne taken loses 6.0 USD/t, which is less; above that the next step down is to 19.1 kt." in march
     )
     assert "2031-03: gas_oil spot_barge is not bought: its first tonne is worth 68.9 USD/bbl, today 69.0." in march
 
@@ -281,7 +281,8 @@ def test_a_take_or_pay_contract(tmp_path: Path) -> None:
     assert (row["step_up"], row["step_down"]) == (None, None)
     assert checked(plan, row, tmp_path) == 2
     assert break_even_prices(plan).sentences == (
-        "month: naphtha term: buy the planned 6.0 kt up to 750.0 USD/t (today 500.0), as 40 % is paid even if it is not taken.",
+        "month: naphtha term: buy the planned 6.0 kt up to 750.0 USD/t (today 500.0), as 40 % is paid even if it is not taken; "
+        "each tonne taken loses 50.0 USD/t, which is less.",
     )
 
 

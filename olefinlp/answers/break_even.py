@@ -163,7 +163,9 @@ def break_even_prices(plan: Plan, parcels: Sequence[float] | None = None) -> Ans
     sizes = Table(
         "parcels", "Value of parcels", _parcel_columns(plan.currency), parcel_rows, "Against buying nothing from the source."
     )
-    return Answer("break_even", "Break-even prices of feeds", (table, sizes), tuple(_sentence(row) for row in rows), note)
+    return Answer(
+        "break_even", "Break-even prices of feeds", (table, sizes), tuple(_sentence(row, plan.currency) for row in rows), note
+    )
 
 
 def _columns(currency: str) -> tuple[Column, ...]:
@@ -293,7 +295,7 @@ def _parcels(offer: Offer, value: Value, sizes: Sequence[float] | None) -> list[
     return rows
 
 
-def _sentence(row: Record) -> str:
+def _sentence(row: Record, currency: str) -> str:
     name, unit = f"{row['month']}: {row['feed']} {row['source']}", row["trade_unit"]
     today, walk_away, paid = f"today {row['price_trade']:,.1f}", row["walk_away_trade"], row["paid_anyway"]
     planned = f"the planned {tonnage(row['bought'])}"
@@ -314,6 +316,8 @@ def _sentence(row: Record) -> str:
     text = f"{name}: buy {planned} up to {walk_away:,.1f} {unit} ({today})"
     if paid:
         text += f", as {percent(paid)} is paid even if it is not taken"
+        if row["exit"] < row["price"]:
+            text += f"; each tonne taken loses {row['price'] - row['exit']:,.1f} {currency}/t, which is less"
     if row["step_down"] is not None:
         text += f"; above that the next step down is to {tonnage(row['step_down'])}"
     return text + "."
