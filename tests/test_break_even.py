@@ -100,7 +100,10 @@ def row_of(answer: Answer, feed: str, source: str) -> Row:
 # ---------------------------------------------------------------------------------- the shipped plants
 
 
-@pytest.mark.parametrize(("name", "prices"), [(MARCH, 13), (APRIL, 13), (MARRAM, 6), ("thermal_cracker.yaml", 4)])
+@pytest.mark.parametrize(
+    ("name", "prices"),
+    [(MARCH, 13), pytest.param(APRIL, 13, marks=pytest.mark.slow), (MARRAM, 6), ("thermal_cracker.yaml", 4)],
+)
 def test_the_volume_moves_at_the_stated_prices(
     name: str, prices: int, shipped_plan: Callable[[str], Plan], answers: dict[str, Answer], tmp_path: Path
 ) -> None:
@@ -110,7 +113,7 @@ def test_the_volume_moves_at_the_stated_prices(
     assert sum(checked(plan, row, tmp_path) for row in answers[name].table.rows) == prices
 
 
-@pytest.mark.parametrize("name", SHIPPED)
+@pytest.mark.parametrize("name", [MARCH, pytest.param(APRIL, marks=pytest.mark.slow), MARRAM, "thermal_cracker.yaml"])
 def test_the_first_tonne(name: str, shipped_plan: Callable[[str], Plan], answers: dict[str, Answer], tmp_path: Path) -> None:
     """Just above what the first tonne is worth nothing is bought, just below it something is. A contract with take-or-pay is
     taken up to what its first tonne is worth over the share that not taking saves."""

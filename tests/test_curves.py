@@ -1,4 +1,4 @@
-"""Step curves and ratio curves against plans made again: at prices and limits in the middle of steps, beside every step's end.
+"""Step curves and ratio curves against plans made again: just inside both ends of steps, at limits in the middle of them.
 
 A price is written into the file and the month planned from nothing; a limit is moved in the arrays of the plan and solved cold;
 a ratio is one row more, solved by another way into the solver.
@@ -105,8 +105,8 @@ def test_a_price(
     shipped_plan: Callable[[str], Plan],
     tmp_path: Path,
 ) -> None:
-    """In the middle of a step the plan made at that price has the step's quantity, close to each end it has it still, and the
-    margins at the ends are those of plans. For a step of a contract its own quantity counts: 9 kt of the 14."""
+    """Close to each end of a step the plan made at that price has the step's quantity, and the margins at the ends are those of
+    plans; volumes fall with the price of what is bought, so in the middle they are the same. For a step of a contract its own quantity counts: 9 kt of the 14."""
     plan = shipped_plan(name)
     month, answer = plan.quantities.case.months[0], step_curve(plan, item, low, high)
     rows = answer.table.rows
@@ -119,9 +119,9 @@ def test_a_price(
             return make_plan(plan.scenario.with_({f"{item}.cost": f"{price!r} {unit}"}))
         return make_plan(repriced(plan.scenario, item, f"{price!r} {unit}", tmp_path))
 
-    for row in rows[:: max(1, len(rows) // 4)]:
+    for row in rows[:: max(1, len(rows) // 3)]:
         width = row["high"] - row["low"]
-        for at in (row["low"] + width / 2, row["low"] + 1e-3 * width, row["high"] - 1e-3 * width):
+        for at in (row["low"] + 1e-3 * width, row["high"] - 1e-3 * width):
             expected = quantity(planned_at(at), month)
             expected = min(expected, 9.0) if item.endswith("tiers.1") else expected
             assert row["level"] == pytest.approx(expected, rel=1e-6, abs=1e-6 * plan.quantities.size), (row, at)
@@ -425,10 +425,10 @@ def best_at(plan: Plan, of: str, to: str, ratio: float) -> float | None:
 
 RATIOS = [
     (MARCH, "propylene", "ethylene"),
-    (APRIL, "propylene", "ethylene"),
     (MARRAM, "propylene", "ethylene"),
-    (MARCH, "crude_c4", "propylene"),
-    (MARCH, "ethane", "ethylene"),
+    pytest.param(APRIL, "propylene", "ethylene", marks=pytest.mark.slow),
+    pytest.param(MARCH, "crude_c4", "propylene", marks=pytest.mark.slow),
+    pytest.param(MARCH, "ethane", "ethylene", marks=pytest.mark.slow),
 ]
 
 
@@ -447,7 +447,7 @@ def test_a_ratio(name: str, of: str, to: str, shipped_plan: Callable[[str], Plan
     ratios, margins = [row["ratio"] for row in rows], [row["margin"] for row in rows]
     misses = [
         abs(np.interp(at, ratios, margins) - (best_at(plan, of, to, at) or INF))
-        for at in np.linspace(ratios[0], ratios[-1], 121)[1:-1]
+        for at in np.linspace(ratios[0], ratios[-1], 101)[1:-1]
     ]
     assert max(misses) <= 1e-4 * plan.margin / 1000
 

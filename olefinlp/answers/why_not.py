@@ -362,7 +362,8 @@ def _feed_sentence(plan: Plan, ways: list[Account], name: str, month: str) -> st
 def _source_sentence(plan: Plan, best: Account, head: str, where: str) -> str:
     q, source, month = plan.quantities, best.source, best.month
     worth = worth_at_gate(q, source, next_step(plan, source, month), month)
-    against = f"worth {worth:,.1f} {plan.currency}/t against a price of {-best.sum_of(PRICE):,.1f}"
+    tank = f" in the tank ({best.worth:,.1f} if it is cracked this month)" if worth - best.worth > 0.05 else ""
+    against = f"worth {worth:,.1f} {plan.currency}/t{tank} against a price of {-best.sum_of(PRICE):,.1f}"
     bought = q.bought(source, month)
     if bought:
         return f"{head} is used: {amount_words(bought)} kt are bought; one more tonne is {against}."
