@@ -106,7 +106,8 @@ def test_a_price(
     tmp_path: Path,
 ) -> None:
     """Close to each end of a step the plan made at that price has the step's quantity, and the margins at the ends are those of
-    plans; volumes fall with the price of what is bought, so in the middle they are the same. For a step of a contract its own quantity counts: 9 kt of the 14."""
+    plans; quantities move one way with the price, so in the middle they are the same. For a step of a contract its own
+    quantity counts: 9 kt of the 14."""
     plan = shipped_plan(name)
     month, answer = plan.quantities.case.months[0], step_curve(plan, item, low, high)
     rows = answer.table.rows

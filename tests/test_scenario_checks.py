@@ -647,3 +647,18 @@ def test_a_stock_at_the_end_worth_far_more_than_its_feed():
         "hint: is the unit right?"
     )
     assert found(MARCH, {"stocks.condensate": {**tank, "end": {"value": "505 USD/t"}}}) == []
+
+
+def test_a_named_limit_in_barrels_or_higher_heating_value():
+    """350 kbbl of 715 kg/m3: 350,000 · 0.158987294928 · 0.715 / 1e6 = 39.7866 kt; 200 TJ HHV · 0.9015 = 180.3 TJ LHV.
+
+    Two feeds of different densities have none in common, so barrels of both cannot be added up."""
+    march = shipped(MARCH)
+    barrels = {"sum": [{"bought": "full_range_naphtha"}], "max": "350 kbbl"}
+    heat = {"sum": [{"imported": "natural_gas"}], "max": "200 TJ HHV"}
+    limits = march.with_({"limits": {"barrels": barrels, "heat": heat}}).case.limits
+    assert limits["named", "barrels", "2031-03"].high == pytest.approx(350 * 0.158987294928 * 0.715, rel=1e-12)
+    assert limits["named", "heat", "2031-03"].high == pytest.approx(180.3, rel=1e-12)
+    both = {"sum": [{"bought": ["full_range_naphtha", "condensate"]}], "max": "350 kbbl"}
+    (message,) = found(MARCH, {"limits": {"both": both}})
+    assert "a volume needs a density to become a mass" in message

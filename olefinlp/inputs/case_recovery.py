@@ -8,6 +8,7 @@ from olefinlp.inputs.findings import Place, path_text
 from olefinlp.inputs.measures import MASS, Measure
 from olefinlp.inputs.periods import Period
 from olefinlp.inputs.plant import RecoveryUnit
+from olefinlp.inputs.plant_sums import joined
 from olefinlp.inputs.ratios import (
     conversion_measure,
     load_per_tonne,
@@ -237,9 +238,11 @@ def _read_named(reader: Reader, name: str, limit: NamedLimit, document: Document
     if measure is None:
         return
     reader.case.sums[name] = tuple(_terms(reader, limit.sum))
+    density, ratio = joined(reader.plant, limit.sum)
     for period in reader.scenario.periods:
-        low = reader.amount(limit.min, period, (*path, "min"), measure, document=document)
-        high = reader.amount(limit.max, period, (*path, "max"), measure, document=document)
+        basis = reader.scenario.basis(period, density, ratio)
+        low = reader.amount(limit.min, period, (*path, "min"), measure, basis, document)
+        high = reader.amount(limit.max, period, (*path, "max"), measure, basis, document)
         places = (document.place((*path, "min")), document.place((*path, "max")))
         reader.limit(
             "named",

@@ -11,6 +11,7 @@ from olefinlp.inputs.plant import Plant
 from olefinlp.inputs.plant_references import ALL, cracked_pairs, known, trades_of
 from olefinlp.inputs.plant_units import check_amount, good_rate, measurable
 from olefinlp.inputs.ratios import conversion_measure, outlet_measure, trade_measure, unit_measure
+from olefinlp.inputs.units import Basis, convert, dims
 from olefinlp.inputs.yaml_files import Document, Path_
 
 TERM_WORDS = {
@@ -107,6 +108,24 @@ def _term_measure(plant: Plant, kind: str, name: str) -> Measure | None:
     return MASS
 
 
+def joined(plant: Plant, terms: tuple[Term, ...]) -> tuple[float | None, float | None]:
+    """Density and ratio of heating values that all terms of a sum have in common, if they have one."""
+    densities: set[float | None] = set()
+    ratios: set[float | None] = set()
+    trades = plant.trades()
+    for name in (name for term in terms for name in term.names):
+        feed = name.split(".")[0]
+        item = plant.file.feeds.get(feed) or plant.file.side_streams.get(feed) or plant.file.outlets.get(name)
+        written = item.density if item else None
+        densities.add(convert(written, dims(mass=1, volume=-1)) if written else None)
+        if name in trades:
+            utility, kind = trades[name]
+            ratios.add(getattr(plant.file.utilities[utility], kind)[name].lhv_over_hhv)
+        elif name in plant.file.outlets:
+            ratios.add(plant.file.outlets[name].lhv_over_hhv)
+    return (densities.pop() if len(densities) == 1 else None), (ratios.pop() if len(ratios) == 1 else None)
+
+
 def check_limit_units(
     plant: Plant,
     limits: Mapping[str, NamedLimit],
@@ -119,10 +138,12 @@ def check_limit_units(
         path = ("limits", name)
         measures = term_measures(plant, limit.sum)
         _one_measure(findings, document.place((*path, "sum")), f"limits.{name}.sum", measures)
+        density, heat_ratio = joined(plant, limit.sum)
+        basis = Basis(density, heat_ratio, hours=1.0, calendar_month=True)
         for key, written in (("min", limit.min), ("max", limit.max)):
             for value in written.values() if written and len(measures) == 1 else ():
                 measure = next(iter(measures.values()))
-                check_amount(findings, document.place((*path, key)), f"limits.{name}.{key}", value, measure)
+                check_amount(findings, document.place((*path, key)), f"limits.{name}.{key}", value, measure, basis)
     for name, ratio in ratios.items():
         measures = term_measures(plant, (*ratio.of, *ratio.to))
         _one_measure(findings, document.place(("ratio_limits", name)), f"ratio_limits.{name}", measures)
