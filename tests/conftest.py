@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import sys
 from collections.abc import Callable
 from functools import cache
@@ -40,7 +41,8 @@ settings.load_profile("repeatable")
 def _scenario(name: str) -> Scenario:
     from olefinlp.inputs.scenario import read_scenario
 
-    return read_scenario(ROOT / "scenarios" / name)
+    with contextlib.chdir(ROOT):  # places are written as seen from the folder in which a file is read
+        return read_scenario(ROOT / "scenarios" / name)
 
 
 @cache
