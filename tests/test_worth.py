@@ -213,6 +213,24 @@ def test_the_list_does_not_hang_on_the_basis(tmp_path: Path) -> None:
     }
 
 
+def test_two_minimums_that_end_at_the_same_place(tmp_path: Path) -> None:
+    """5 kt must be taken at 650, and just 5 kt give the 2 kt of ethylene that a customer must get. Being let off one changes
+    nothing, as the other stays; a tonne more to take loses 50, a tonne more of ethylene 50/0.4 = 125. One of them has no dual."""
+    plan = planned(
+        tmp_path,
+        **ONE_FEED,
+        scenario="""
+            feeds: {naphtha: {spot: {min: 5 kt, max: 9 kt, price: 650 USD/t}}}
+            outlets: {ethylene_sale: {min: 2 kt}}
+        """,
+    )
+    assert sorted(row["worth"] > NOTHING for row in plan.limits.rows if row["state"] == "at minimum") == [False, True]
+    assert worths(worth_of_limits(plan)) == {
+        "naphtha spot bought": (pytest.approx(0, abs=1e-6), pytest.approx(50)),
+        "ethylene_sale": (pytest.approx(0, abs=1e-6), pytest.approx(125)),
+    }
+
+
 def test_a_reached_limit_worth_nothing_is_not_listed(tmp_path: Path) -> None:
     """Two sources at the same price fill the furnace together: one is fixed at 5 kt, and moving that changes nothing, as the
     other has room on both sides."""

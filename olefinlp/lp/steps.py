@@ -126,7 +126,7 @@ def side(evaluate: Evaluate, base: Point, reach: float, size: float) -> Side:
             continue
         at = _meeting(base, far) if base.slope != far.slope else base.at
         if abs(at - base.at) <= 1e-9 * abs(far.at - base.at) or not min(base.at, far.at) < at < max(base.at, far.at):
-            at = base.at + (far.at - base.at) / 16  # the base's own slope is of its other side
+            at = base.at + (far.at - base.at) / 16  # rounding has put the meeting outside
         middle = evaluate(at)
         if middle is None:
             return Side(None, None, None)
