@@ -30,7 +30,7 @@ WARM = 4
 """Simplex strategy from a basis, primal: at other prices, which most questions ask for, the base's plan stays possible."""
 STRATEGIES = (0, 1, 4)
 """Simplex strategies without a basis: the solver's choice, dual, primal."""
-TOGETHER = 8
+TOGETHER = 16
 """How many optima are proven at once, where a question allows it."""
 
 
