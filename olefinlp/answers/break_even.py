@@ -330,7 +330,7 @@ def first_tonne_worths(plan: Plan) -> dict[tuple[str, str], float | None]:
     a little of the feed forced in. Elsewhere the shadow prices tell, and nothing is solved.
     """
     q, found = plan.quantities, {}
-    for offer in offers(plan) if any(_makes_new(plan, offer) for offer in offers(plan)) else ():
+    for offer in offers(plan):
         if _makes_new(plan, offer):
             value = Value(plan.neighbours, offer, q.case.sources[offer.source].tiers)
             none = value(0.0)

@@ -9,7 +9,7 @@ from typing import Any
 
 from olefinlp.answers.answer import Answer, Chart
 from olefinlp.answers.tables import Column, Table
-from olefinlp.outputs.files import write_text, write_whole
+from olefinlp.outputs.files import write_bytes, write_text
 from olefinlp.outputs.records import table_csv
 from olefinlp.outputs.text import INDENT, aligned, number, significant
 
@@ -47,12 +47,7 @@ def write_answer_csv(answer: Answer, path: str | os.PathLike[str]) -> Path:
 
 def write_answer(answer: Answer, path: str | os.PathLike[str]) -> Path:
     """Write an answer as a workbook with its chart, whole or not at all. Raises `OutputError`."""
-    content = answer_bytes(answer)
-
-    def write(temporary: Path) -> None:
-        temporary.write_bytes(content)
-
-    return write_whole(path, write)
+    return write_bytes(path, answer_bytes(answer))
 
 
 def answer_bytes(answer: Answer) -> bytes:

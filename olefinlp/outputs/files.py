@@ -74,6 +74,15 @@ def _words(target: Path, error: OSError) -> str:
     return f"{name} cannot be written: {error.strerror or error}{kept}"
 
 
+def write_bytes(path: str | os.PathLike[str], content: bytes) -> Path:
+    """Write a file whose content is there already, whole or not at all."""
+
+    def write(temporary: Path) -> None:
+        temporary.write_bytes(content)
+
+    return write_whole(path, write)
+
+
 def write_text(path: str | os.PathLike[str], text: str) -> Path:
     """Write a UTF-8 text file, whole or not at all."""
 

@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from olefinlp.answers.tables import Column, Record, Table
-from olefinlp.outputs.files import write_whole
+from olefinlp.outputs.files import write_bytes
 from olefinlp.outputs.workbook_book import Book
 from olefinlp.outputs.workbook_money import write_feeds, write_money, write_prices, write_slate
 from olefinlp.outputs.workbook_overview import write_overview
@@ -28,12 +28,7 @@ def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answ
 
     Raises `OutputError` when the file cannot be written; what was there before is then still there.
     """
-    content = workbook_bytes(plan, answers)
-
-    def write(temporary: Path) -> None:
-        temporary.write_bytes(content)
-
-    return write_whole(path, write)
+    return write_bytes(path, workbook_bytes(plan, answers))
 
 
 def workbook_bytes(plan: Plan, answers: tuple[Answer, ...] = ()) -> bytes:
