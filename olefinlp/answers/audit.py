@@ -28,7 +28,7 @@ def audit_table(plan: Plan) -> Table:
     c, scenario = plan.certificate, plan.scenario
     rows = [
         _row("what", "plant", scenario.plant.name, scenario.plant.file.source),
-        _row("what", "scenario", scenario.title, f"price case {scenario.file.price_case or 'in the scenario'}"),
+        _row("what", "scenario", scenario.title, f"price case {scenario.price_case or 'in the scenario'}"),
         _row("what", "tool", f"olefinlp {__version__}", ""),
         _row("solve", "status", plan.status, "only a proven optimum is a plan"),
         _row("solve", "solver", solver_version(), ", ".join(f"{k}={v}" for k, v in OPTIONS.items())),

@@ -139,7 +139,7 @@ def flat_table(q: Quantities, lines: list[MoneyLine]) -> Table:
         Column("value", "Value", kind="number"),
         Column("unit", "Unit"),
     )
-    price_case = case.scenario.file.price_case or ""
+    price_case = case.scenario.price_case
     rows: list[Record] = []
 
     def add(month: str, group: str, item: str, measure: str, value: float | None, unit: str) -> None:

@@ -379,7 +379,7 @@ def build_case(scenario: Scenario, findings: Findings) -> Case | None:
     All sections are read even when one is wrong, so that all faults show at once.
     """
     from olefinlp.inputs import case_furnaces, case_outlets, case_recovery, case_supply, case_utilities
-    from olefinlp.inputs.prices import PriceBook
+    from olefinlp.inputs.prices import PriceBook, price_items_of
     from olefinlp.inputs.scenario_checks import check_case, check_references
 
     before = len(findings.errors)
@@ -387,8 +387,7 @@ def build_case(scenario: Scenario, findings: Findings) -> Case | None:
     check_references(scenario, findings)
     if len(findings.errors) > before:
         return None
-    items = [*case_supply.price_items(scenario), *case_outlets.price_items(scenario), *case_utilities.price_items(scenario)]
-    reader.case.prices = PriceBook(scenario, items, findings).prices()
+    reader.case.prices = PriceBook(scenario, price_items_of(scenario).values(), findings).prices()
     case_recovery.read_recovery(reader)
     case_supply.read_supply(reader)
     case_furnaces.read_furnaces(reader)

@@ -63,6 +63,14 @@ class Price:
     place: Place
 
 
+def price_items_of(scenario: Scenario) -> dict[str, PriceItem]:
+    """Every price that a scenario needs, by item: what it is per, and what turns its units."""
+    from olefinlp.inputs import case_outlets, case_supply, case_utilities
+
+    items = [*case_supply.price_items(scenario), *case_outlets.price_items(scenario), *case_utilities.price_items(scenario)]
+    return {item.item: item for item in items}
+
+
 def item_name(path: Iterable[str | int]) -> str:
     """The item of a path: `feeds.ethane.contract.price` is `feeds.ethane.contract`.
 
@@ -74,8 +82,11 @@ def item_name(path: Iterable[str | int]) -> str:
 
 
 @dataclass(frozen=True, slots=True)
-class _Written:
-    """One price as written for one month, before others that it leans on are known."""
+class PriceGiven:
+    """One price as written for one month, before others that it leans on are known.
+
+    A case gives its prices so, in place of those that the scenario writes.
+    """
 
     price: PriceWritten
     basis: str
@@ -143,7 +154,10 @@ class PriceBook:
         if key not in self._done:
             if name in self._busy:
                 chain = " → ".join([*self._busy[self._busy.index(name) :], name])
-                self.findings.error(self._place(self.items[name]), name, f"the price leans on itself: {chain}")
+                given = self.scenario.given
+                own = given.get(key) or given.get((name, ""))
+                place = own.place if own else self._place(self.items[name])
+                self.findings.error(place, name, f"the price leans on itself: {chain}")
                 return None
             self._busy.append(name)
             written = self._written(self.items[name], period.name)
@@ -154,7 +168,10 @@ class PriceBook:
     def _place(self, item: PriceItem) -> Place:
         return self.scenario.document.place(item.path)
 
-    def _written(self, item: PriceItem, month: str) -> _Written | None:
+    def _written(self, item: PriceItem, month: str) -> PriceGiven | None:
+        given = self.scenario.given
+        if (item.item, month) in given or (item.item, "") in given:
+            return given.get((item.item, month)) or given[item.item, ""]
         rows = self.rows.get(item.item, {})
         if item.written is not None and rows:
             line = next(iter(rows.values())).place()
@@ -167,7 +184,7 @@ class PriceBook:
                 message = f"has no {item.path[-1]} for {month}"
                 self.findings.error(self._place(item), item.item, message, "add it, or `other_months:`")
                 return None
-            return _Written(price, item.basis, "", self._place(item))
+            return PriceGiven(price, item.basis, "", self._place(item))
         row = rows.get(month) or rows.get("")
         if row is None:
             file = self.scenario.file.prices
@@ -186,10 +203,10 @@ class PriceBook:
             elif month not in months:
                 self.findings.warn(self._place(item), item.item, f"has no effect: {month} is not in this scenario")
 
-    def _from_row(self, item: PriceItem, row: Row) -> _Written | None:
+    def _from_row(self, item: PriceItem, row: Row) -> PriceGiven | None:
         case = str(self.scenario.file.price_case)
         if not row.text(case):
-            case = self.scenario.price_cases()[0]
+            case = self.scenario.price_cases()[0]  # blank: as the first case
         number = row.number(case, self.findings)
         if number is None:
             if not row.text(case):
@@ -210,9 +227,9 @@ class PriceBook:
         elif of:
             written = PriceWritten(None, of, 1.0, quantity)
         source = " ".join(part for part in (row.text("source"), row.text("date")) if part)
-        return _Written(written, row.text("basis"), source, row.place(case))
+        return PriceGiven(written, row.text("basis"), source, row.place(case))
 
-    def _worked_out(self, item: PriceItem, written: _Written, period: Period) -> Price | None:
+    def _worked_out(self, item: PriceItem, written: PriceGiven, period: Period) -> Price | None:
         price = written.price
         try:
             if price.quantity:
@@ -223,7 +240,7 @@ class PriceBook:
             self.findings.error(written.place, item.item, str(error), error.hint)
             return None
 
-    def _relative(self, item: PriceItem, written: _Written, period: Period) -> Price | None:
+    def _relative(self, item: PriceItem, written: PriceGiven, period: Period) -> Price | None:
         price = written.price
         name = item_name(price.of.split("."))
         if name not in self.items:
@@ -262,7 +279,7 @@ class PriceBook:
     def _made(
         self,
         item: PriceItem,
-        written: _Written,
+        written: PriceGiven,
         period: Period,
         quantity: Quantity | None,
         factor: float,

@@ -7,7 +7,7 @@ import copy
 import functools
 import os
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -22,6 +22,7 @@ from olefinlp.inputs.yaml_files import Document, Path_, read_yaml
 
 if TYPE_CHECKING:
     from olefinlp.inputs.case import Case
+    from olefinlp.inputs.prices import PriceGiven
 
 PRICE_COLUMNS = ("item", "unit", "basis", "source", "date")
 PRICE_EXTRAS = ("relative_to", "month", "note")
@@ -39,6 +40,9 @@ class Scenario:
     price_table: Table | None
     rates: dict[str, float]
     warnings: tuple[Finding, ...] = ()
+    given: Mapping[tuple[str, str], PriceGiven] = field(default_factory=dict)
+    """(item, month, or "" for all) → a price that a case gives in place of the one written here."""
+    case_name: str = ""
 
     @property
     def title(self) -> str:
@@ -49,6 +53,11 @@ class Scenario:
     def currency(self) -> str:
         """ISO code of the money of this scenario."""
         return self.file.currency
+
+    @property
+    def price_case(self) -> str:
+        """The name of the case: that of a case sheet, else of the column of the price table, else nothing."""
+        return self.case_name or self.file.price_case or ""
 
     @property
     def files(self) -> tuple[str, ...]:
@@ -90,17 +99,25 @@ class Scenario:
         """
         findings = Findings()
         data = copy.deepcopy(self.document.data)
-        lines = dict(self.document.lines)
+        lines, places = dict(self.document.lines), dict(self.document.places)
         for name, value in {**(changes or {}), **fields}.items():
-            written = _set(data, tuple(name.split(".")), copy.deepcopy(value), findings, self.document)
+            written = set_value(data, tuple(name.split(".")), copy.deepcopy(value), findings, self.document)
             lines = {path: line for path, line in lines.items() if path[: len(written)] != written}
+            places = {path: place for path, place in places.items() if path[: len(written)] != written}
         findings.stop_on_errors()
-        document = replace(self.document, data=data, lines=lines)
+        document = replace(self.document, data=data, lines=lines, places=places)
         plant = None if "plant" in fields or "plant" in (changes or {}) else self.plant
-        scenario = _scenario(self.path, document, plant, findings)
+        name = "" if "price_case" in fields or "price_case" in (changes or {}) else self.case_name
+        scenario = _scenario(self.path, document, plant, findings, self.given, name)
         findings.stop_on_errors()
         assert scenario is not None
         return scenario
+
+    def as_case(
+        self, name: str, document: Document, given: Mapping[tuple[str, str], PriceGiven], findings: Findings
+    ) -> Scenario | None:
+        """The scenario under the name of a case, with a changed document and prices given; None with findings."""
+        return _scenario(self.path, document, self.plant, findings, given, name)
 
 
 def read_scenario(path: str | os.PathLike[str]) -> Scenario:
@@ -125,7 +142,7 @@ def load_scenario(path: str | os.PathLike[str], findings: Findings) -> Scenario 
     return _scenario(Path(path), document, None, findings) if document else None
 
 
-def _set(data: Any, path: Path_, value: Any, findings: Findings, document: Document) -> Path_:
+def set_value(data: Any, path: Path_, value: Any, findings: Findings, document: Document) -> Path_:
     """Set one value in nested mappings and lists, making mappings that are missing; the path as lines are kept."""
     written: Path_ = ()
     for depth, part in enumerate(path):
@@ -149,7 +166,14 @@ def _set(data: Any, path: Path_, value: Any, findings: Findings, document: Docum
     return written
 
 
-def _scenario(path: Path, document: Document, plant: Plant | None, findings: Findings) -> Scenario | None:
+def _scenario(
+    path: Path,
+    document: Document,
+    plant: Plant | None,
+    findings: Findings,
+    given: Mapping[tuple[str, str], PriceGiven] | None = None,
+    case_name: str = "",
+) -> Scenario | None:
     from olefinlp.inputs.case import build_case
 
     file = validate(document, ScenarioFile, findings)
@@ -166,7 +190,7 @@ def _scenario(path: Path, document: Document, plant: Plant | None, findings: Fin
     rates = _rates(file, document, findings)
     if len(findings.errors) > before:
         return None  # else every price in that money would be a finding of its own
-    scenario = Scenario(path, document, file, plant, periods, table, rates)
+    scenario = Scenario(path, document, file, plant, periods, table, rates, (), given or {}, case_name)
     if findings.errors:
         # There is no plan, but what else is wrong is worth saying; on what is known to be wrong a
         # later check may stumble, and then the findings so far are what there is to say.

@@ -5,12 +5,11 @@ from __future__ import annotations
 import itertools
 from collections.abc import Iterator, Mapping
 
-from olefinlp.inputs import case_outlets, case_supply, case_utilities
 from olefinlp.inputs.case import Case, CostLine
 from olefinlp.inputs.findings import Findings
 from olefinlp.inputs.periods import Period
 from olefinlp.inputs.price_windows import price_window
-from olefinlp.inputs.prices import Price, PriceItem
+from olefinlp.inputs.prices import Price, PriceItem, price_items_of
 from olefinlp.inputs.units import Basis, Quantity, UnitError, convert, parse_unit
 
 DISCOUNT = "a quantity discount needs whole-number decisions, which are not on"
@@ -37,20 +36,13 @@ def high_of(case: Case, *key: str) -> float | None:
     return limit.high if limit else None
 
 
-def price_items(case: Case) -> dict[str, PriceItem]:
-    """What each price of the scenario is per, with what turns its units."""
-    scenario = case.scenario
-    items = [*case_supply.price_items(scenario), *case_outlets.price_items(scenario), *case_utilities.price_items(scenario)]
-    return {item.item: item for item in items}
-
-
 # ---------------------------------------------------------------------------------- plausible prices
 
 
 def check_plausible(case: Case, findings: Findings) -> None:
     """A price outside its window is mostly one in a wrong unit, or on a wrong basis."""
     windows = case.scenario.plant.file.price_windows
-    items = price_items(case)
+    items = price_items_of(case.scenario)
     for (name, month), price in case.prices.items():
         key = window_key(name, windows)
         if key:

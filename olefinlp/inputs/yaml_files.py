@@ -21,17 +21,21 @@ MAX_DEPTH = 40
 
 @dataclass(frozen=True)
 class Document:
-    """A YAML file as plain values (`data`), with the line of every path in it."""
+    """A YAML file as plain values (`data`), with the line of every path in it.
+
+    `places` are those of values that were changed elsewhere, such as a cell of a case sheet.
+    """
 
     file: str
     data: dict[str, Any]
     lines: dict[Path_, int] = field(default_factory=dict)
+    places: dict[Path_, Place] = field(default_factory=dict)
 
     def place(self, path: Path_) -> Place:
         """The place of a path, or of the nearest thing above it that is written."""
-        while path and path not in self.lines:
+        while path and path not in self.lines and path not in self.places:
             path = path[:-1]
-        return Place(self.file, self.lines.get(path, 1))
+        return self.places.get(path) or Place(self.file, self.lines.get(path, 1))
 
 
 def read_text(path: str | os.PathLike[str], findings: Findings, limit: int = MAX_BYTES) -> str | None:

@@ -40,7 +40,7 @@ def _head(plan: Plan) -> list[str]:
     case = plan.quantities.case
     hours = sum(p.hours for p in case.periods)
     span = case.months[0] if len(case.months) == 1 else f"{case.months[0]} to {case.months[-1]}"
-    price_case = plan.scenario.file.price_case
+    price_case = plan.scenario.price_case
     parts = [span, f"{hours:g} h", f"price case {price_case}" if price_case else "prices of the scenario", "proven optimum"]
     return [plan.scenario.title, plan.scenario.plant.name, " · ".join(parts)]
 

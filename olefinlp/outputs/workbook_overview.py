@@ -68,7 +68,7 @@ def _facts(page: Page) -> None:
     facts = (
         ("Plant", scenario.plant.name),
         ("Period", span),
-        ("Price case", scenario.file.price_case or "as written in the scenario"),
+        ("Price case", scenario.price_case or "as written in the scenario"),
         ("Status", f"{page.plan.status}, proven (see Audit)"),
     )
     for page.row, (name, value) in enumerate(facts, 1):
