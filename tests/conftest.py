@@ -3,6 +3,9 @@
 from __future__ import annotations
 
 import contextlib
+import os
+import shutil
+import subprocess
 import sys
 from collections.abc import Callable
 from functools import cache
@@ -25,6 +28,21 @@ if TYPE_CHECKING:
     from olefinlp.inputs.scenario import Scenario
 
 SCENARIOS = tuple(sorted(path.name for path in (ROOT / "scenarios").glob("*.yaml")))
+
+RECALCULATE_ALWAYS = """<?xml version="1.0" encoding="UTF-8"?>
+<oor:items xmlns:oor="http://openoffice.org/2001/registry">
+<item oor:path="/org.openoffice.Office.Calc/Formula/Load">
+<prop oor:name="OOXMLRecalcMode" oor:op="fuse"><value>0</value></prop>
+</item>
+</oor:items>
+"""
+
+needs_office = pytest.mark.skipif(
+    shutil.which("soffice") is None and "OLEFINLP_NEEDS_LIBREOFFICE" not in os.environ,
+    reason="needs LibreOffice (soffice) to recalculate; where OLEFINLP_NEEDS_LIBREOFFICE is set it fails instead",
+)
+Recalculate = Callable[..., list[Path]]
+"""Files through LibreOffice, every formula calculated again: what the fixture `recalculate` gives."""
 
 settings.register_profile(
     "repeatable",
@@ -80,3 +98,27 @@ def every_plan(request: pytest.FixtureRequest) -> Plan:
 def march() -> Plan:
     """The plan of March 2031, the case most checks begin with."""
     return _plan("brackwater_2031_03.yaml")
+
+
+@pytest.fixture(scope="session")
+def recalculate(tmp_path_factory: pytest.TempPathFactory) -> Recalculate:
+    """Files through LibreOffice, every formula calculated again."""
+    profile = tmp_path_factory.mktemp("profile")
+    (profile / "user").mkdir()
+    (profile / "user" / "registrymodifications.xcu").write_text(RECALCULATE_ALWAYS, encoding="utf-8")
+    out = tmp_path_factory.mktemp("recalculated")
+
+    def run(*files: Path) -> list[Path]:
+        command = [
+            "soffice",
+            f"-env:UserInstallation=file://{profile}",
+            "--headless",
+            "--convert-to",
+            "xlsx",
+            "--outdir",
+            str(out),
+        ]
+        subprocess.run([*command, *map(str, files)], check=True, capture_output=True, timeout=300)
+        return [out / file.name for file in files]
+
+    return run

@@ -9,7 +9,6 @@ from __future__ import annotations
 import io
 import os
 import re
-import shutil
 import subprocess
 import sys
 import zipfile
@@ -19,7 +18,7 @@ from typing import Any
 
 import openpyxl
 import pytest
-from conftest import ROOT, SCENARIOS
+from conftest import ROOT, SCENARIOS, Recalculate, needs_office
 
 from olefinlp import make_plan, read_scenario
 from olefinlp.answers.limits import binding
@@ -35,19 +34,6 @@ HEADER = 2
 """Row of the headers, except on the flat list."""
 
 MONEY_HEADINGS = {"Money": ("Price", "Amount"), "Feeds": ("Price,", "Cost"), "Slate": ("Price or", "Revenue")}
-RECALCULATE_ALWAYS = """<?xml version="1.0" encoding="UTF-8"?>
-<oor:items xmlns:oor="http://openoffice.org/2001/registry">
-<item oor:path="/org.openoffice.Office.Calc/Formula/Load">
-<prop oor:name="OOXMLRecalcMode" oor:op="fuse"><value>0</value></prop>
-</item>
-</oor:items>
-"""
-
-needs_office = pytest.mark.skipif(
-    shutil.which("soffice") is None and "OLEFINLP_NEEDS_LIBREOFFICE" not in os.environ,
-    reason="needs LibreOffice (soffice) to recalculate; where OLEFINLP_NEEDS_LIBREOFFICE is set it fails instead",
-)
-Recalculate = Callable[..., list[Path]]
 
 
 @pytest.fixture(scope="module")
@@ -69,30 +55,6 @@ def odd(march: Plan) -> Plan:
 @pytest.fixture(scope="module")
 def book(march: Plan) -> Any:
     return read(workbook_bytes(march))
-
-
-@pytest.fixture(scope="module")
-def recalculate(tmp_path_factory: pytest.TempPathFactory) -> Recalculate:
-    """Files through LibreOffice, every formula calculated again."""
-    profile = tmp_path_factory.mktemp("profile")
-    (profile / "user").mkdir()
-    (profile / "user" / "registrymodifications.xcu").write_text(RECALCULATE_ALWAYS, encoding="utf-8")
-    out = tmp_path_factory.mktemp("recalculated")
-
-    def run(*files: Path) -> list[Path]:
-        command = [
-            "soffice",
-            f"-env:UserInstallation=file://{profile}",
-            "--headless",
-            "--convert-to",
-            "xlsx",
-            "--outdir",
-            str(out),
-        ]
-        subprocess.run([*command, *map(str, files)], check=True, capture_output=True, timeout=300)
-        return [out / file.name for file in files]
-
-    return run
 
 
 def read(source: bytes | Path, values: bool = False) -> Any:
