@@ -19,7 +19,12 @@ if TYPE_CHECKING:
     from olefinlp.answers.answer import Answer as Answer
     from olefinlp.answers.balances import BalanceError as BalanceError
     from olefinlp.answers.break_even import break_even_prices as break_even_prices
+    from olefinlp.answers.bridge import bridge as bridge
+    from olefinlp.answers.buying import buying_plan as buying_plan
+    from olefinlp.answers.case_answers import case_answers as case_answers
     from olefinlp.answers.cash_cost import cash_cost as cash_cost
+    from olefinlp.answers.comparison import Comparison as Comparison
+    from olefinlp.answers.comparison import compare_cases as compare_cases
     from olefinlp.answers.curves import step_curve as step_curve
     from olefinlp.answers.default import default_answers as default_answers
     from olefinlp.answers.impossible import explain_impossible as explain_impossible
@@ -27,12 +32,16 @@ if TYPE_CHECKING:
     from olefinlp.answers.plan import NoPlan as NoPlan
     from olefinlp.answers.plan import Plan as Plan
     from olefinlp.answers.plan import make_plan as make_plan
+    from olefinlp.answers.price_ranges import price_ranges as price_ranges
     from olefinlp.answers.ratio_curve import ratio_curve as ratio_curve
+    from olefinlp.answers.regret import regret_table as regret_table
     from olefinlp.answers.room import room_to_move as room_to_move
     from olefinlp.answers.tables import Table as Table
     from olefinlp.answers.why_not import why_not_feed as why_not_feed
     from olefinlp.answers.why_not import why_not_mode as why_not_mode
     from olefinlp.answers.worth import worth_of_limits as worth_of_limits
+    from olefinlp.inputs.case_files import read_cases as read_cases
+    from olefinlp.inputs.cases import CaseSet as CaseSet
     from olefinlp.inputs.findings import Finding as Finding
     from olefinlp.inputs.findings import InputError as InputError
     from olefinlp.inputs.plant import Plant as Plant
@@ -41,6 +50,9 @@ if TYPE_CHECKING:
     from olefinlp.inputs.scenario import read_scenario as read_scenario
     from olefinlp.lp.certificate import CertificateError as CertificateError
     from olefinlp.outputs import write_answer as write_answer
+    from olefinlp.outputs import write_bridge as write_bridge
+    from olefinlp.outputs import write_case_sheet as write_case_sheet
+    from olefinlp.outputs import write_comparison as write_comparison
     from olefinlp.outputs import write_csv as write_csv
     from olefinlp.outputs import write_json as write_json
     from olefinlp.outputs import write_lp as write_lp
@@ -52,7 +64,9 @@ __version__ = "0.1.0"
 _HOMES = {
     "Answer": "olefinlp.answers.answer",
     "BalanceError": "olefinlp.answers.balances",
+    "CaseSet": "olefinlp.inputs.cases",
     "CertificateError": "olefinlp.lp.certificate",
+    "Comparison": "olefinlp.answers.comparison",
     "Finding": "olefinlp.inputs.findings",
     "InputError": "olefinlp.inputs.findings",
     "NoPlan": "olefinlp.answers.plan",
@@ -62,13 +76,20 @@ _HOMES = {
     "Scenario": "olefinlp.inputs.scenario",
     "Table": "olefinlp.answers.tables",
     "break_even_prices": "olefinlp.answers.break_even",
+    "bridge": "olefinlp.answers.bridge",
+    "buying_plan": "olefinlp.answers.buying",
+    "case_answers": "olefinlp.answers.case_answers",
     "cash_cost": "olefinlp.answers.cash_cost",
+    "compare_cases": "olefinlp.answers.comparison",
     "default_answers": "olefinlp.answers.default",
     "explain_impossible": "olefinlp.answers.impossible",
     "make_plan": "olefinlp.answers.plan",
+    "price_ranges": "olefinlp.answers.price_ranges",
     "ratio_curve": "olefinlp.answers.ratio_curve",
+    "read_cases": "olefinlp.inputs.case_files",
     "read_plant": "olefinlp.inputs.plant",
     "read_scenario": "olefinlp.inputs.scenario",
+    "regret_table": "olefinlp.answers.regret",
     "room_to_move": "olefinlp.answers.room",
     "step_curve": "olefinlp.answers.curves",
     "who_earns_the_margin": "olefinlp.answers.margin_owners",
@@ -76,6 +97,9 @@ _HOMES = {
     "why_not_mode": "olefinlp.answers.why_not",
     "worth_of_limits": "olefinlp.answers.worth",
     "write_answer": "olefinlp.outputs",
+    "write_bridge": "olefinlp.outputs",
+    "write_case_sheet": "olefinlp.outputs",
+    "write_comparison": "olefinlp.outputs",
     "write_csv": "olefinlp.outputs",
     "write_json": "olefinlp.outputs",
     "write_lp": "olefinlp.outputs",
@@ -85,7 +109,9 @@ _HOMES = {
 __all__ = [
     "Answer",
     "BalanceError",
+    "CaseSet",
     "CertificateError",
+    "Comparison",
     "Finding",
     "InputError",
     "NoPlan",
@@ -96,13 +122,20 @@ __all__ = [
     "Table",
     "__version__",
     "break_even_prices",
+    "bridge",
+    "buying_plan",
+    "case_answers",
     "cash_cost",
+    "compare_cases",
     "default_answers",
     "explain_impossible",
     "make_plan",
+    "price_ranges",
     "ratio_curve",
+    "read_cases",
     "read_plant",
     "read_scenario",
+    "regret_table",
     "room_to_move",
     "step_curve",
     "who_earns_the_margin",
@@ -110,6 +143,9 @@ __all__ = [
     "why_not_mode",
     "worth_of_limits",
     "write_answer",
+    "write_bridge",
+    "write_case_sheet",
+    "write_comparison",
     "write_csv",
     "write_json",
     "write_lp",

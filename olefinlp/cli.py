@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from olefinlp import cli_cases
 from olefinlp.cli_support import (
     EXIT_FAILED,
     EXIT_INPUT,
@@ -224,6 +225,10 @@ def curve(
         stop(str(error), EXIT_OUTPUT)
     if output or csv_file:
         note("\nwritten: " + ", ".join(shown_path(p) for p in (output, csv_file) if p))
+
+
+app.command()(cli_cases.cases)
+app.command()(cli_cases.bridge)
 
 
 @app.command()

@@ -8,10 +8,21 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from olefinlp.answers.answer import Answer
+    from olefinlp.answers.case_answers import CaseAnswers
+    from olefinlp.answers.comparison import Comparison
     from olefinlp.answers.plan import Plan
     from olefinlp.inputs.scenario import Scenario
 
-__all__ = ["write_answer", "write_csv", "write_json", "write_lp", "write_workbook"]
+__all__ = [
+    "write_answer",
+    "write_bridge",
+    "write_case_sheet",
+    "write_comparison",
+    "write_csv",
+    "write_json",
+    "write_lp",
+    "write_workbook",
+]
 
 
 def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:
@@ -29,6 +40,27 @@ def write_answer(answer: Answer, path: str | os.PathLike[str]) -> Path:
     from olefinlp.outputs.answer_files import write_answer as write
 
     return write(answer, path)
+
+
+def write_bridge(found: Answer, path: str | os.PathLike[str]) -> Path:
+    """Write a bridge as a workbook with its waterfall, effects as formulas, whole or not at all. Raises `OutputError`."""
+    from olefinlp.outputs.bridge_workbook import write_bridge as write
+
+    return write(found, path)
+
+
+def write_case_sheet(scenario: Scenario, path: str | os.PathLike[str]) -> Path:
+    """Write the case sheet of a scenario, to be filled in and read with `read_cases`. Raises `OutputError`."""
+    from olefinlp.outputs.case_sheet import write_case_sheet as write
+
+    return write(scenario, path)
+
+
+def write_comparison(comparison: Comparison, path: str | os.PathLike[str], answers: CaseAnswers | None = None) -> Path:
+    """Write a comparison as a workbook, one column a case, whole or not at all. Raises `OutputError`."""
+    from olefinlp.outputs.comparison_workbook import write_comparison as write
+
+    return write(comparison, path, answers)
 
 
 def write_json(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:

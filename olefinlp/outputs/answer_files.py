@@ -24,7 +24,7 @@ def answer_text(answer: Answer) -> str:
     columns = [c for c in answer.table.columns if any(row[c.key] not in (None, "") for row in answer.table.rows)]
     rows = [[c.heading for c in columns]]
     rows += [[_cell(c, row[c.key]) for c in columns] for row in answer.table.rows[:MOST_ROWS]]
-    lines += aligned(rows, left=0)
+    lines += aligned(rows, left=[at for at, column in enumerate(columns) if column.kind == "text"])
     if len(answer.table.rows) > MOST_ROWS:
         lines.append(f"{INDENT}and {len(answer.table.rows) - MOST_ROWS} rows more: write them with --csv or --output")
     return "\n".join([*lines, *([f"{INDENT}{answer.note}"] if answer.note else [])])

@@ -42,7 +42,7 @@ def plan_record(plan: Plan, answers: Answers = ()) -> dict[str, Any]:
         "title": plan.scenario.title,
         "plant": plan.scenario.plant.name,
         "currency": plan.currency,
-        "price_case": plan.scenario.file.price_case,
+        "price_case": plan.scenario.price_case or None,
         "margin": plan.margin,
         "fixed_cost": plan.fixed_cost(),
         "months": months,
@@ -50,7 +50,7 @@ def plan_record(plan: Plan, answers: Answers = ()) -> dict[str, Any]:
         "warnings": [str(w) for w in plan.warnings],
         "answers": [{"name": a.name, "title": a.title, "sentences": list(a.sentences), "note": a.note} for a in answers],
     }
-    return head | {table.name: [_plain(row) for row in table.rows] for table in tables}
+    return head | {table.name: [plain(row) for row in table.rows] for table in tables}
 
 
 def _tables(plan: Plan, answers: Answers) -> list[Table]:
@@ -63,7 +63,7 @@ def _unit(column: Column) -> str:
     return "fraction" if column.kind == "share" else column.unit
 
 
-def _plain(row: dict[str, Any]) -> dict[str, Any]:
+def plain(row: dict[str, Any]) -> dict[str, Any]:
     """A record that JSON can hold."""
     return {key: _value(value) for key, value in row.items()}
 
@@ -97,9 +97,15 @@ def table_csv(table: Table) -> str:
 
 def write_csv(plan: Plan, folder: str | os.PathLike[str], answers: Answers = ()) -> list[Path]:
     """Write every table of a plan as a csv file into a folder, which is made if it is not there."""
-    target = Path(folder)
-    try:
-        target.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise OutputError(f"{target} is no folder that can be written to: {error.strerror or error}") from error
+    target = folder_of(folder)
     return [write_text(target / f"{table.name}.csv", table_csv(table)) for table in _tables(plan, answers)]
+
+
+def folder_of(path: str | os.PathLike[str]) -> Path:
+    """A folder to write into, made if it is not there. Raises `OutputError`."""
+    folder = Path(path)
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise OutputError(f"{folder} is no folder that can be written to: {error.strerror or error}") from error
+    return folder

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 
 INDENT = "  "
 
@@ -36,15 +36,16 @@ def significant(value: float | None) -> str:
     return number(value, decimals) if size >= 1e-3 else f"{value:.2g}"
 
 
-def aligned(rows: Sequence[Sequence[str]], left: int = 1) -> list[str]:
-    """Rows as lines: the first `left` columns to the left, the others to the right."""
+def aligned(rows: Sequence[Sequence[str]], left: int | Collection[int] = 1) -> list[str]:
+    """Rows as lines: the first `left` columns, or those named, to the left, the others to the right."""
     if not rows:
         return []
+    lefts = range(left) if isinstance(left, int) else left
     widths = [max(len(row[i]) for row in rows) for i in range(len(rows[0]))]
     lines = []
     for row in rows:
         sized = enumerate(zip(row, widths, strict=True))
-        cells = [cell.ljust(width) if i < left else cell.rjust(width) for i, (cell, width) in sized]
+        cells = [cell.ljust(width) if i in lefts else cell.rjust(width) for i, (cell, width) in sized]
         lines.append((INDENT + "  ".join(cells)).rstrip())
     return lines
 

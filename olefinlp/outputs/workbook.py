@@ -43,7 +43,7 @@ def workbook_bytes(plan: Plan, answers: tuple[Answer, ...] = ()) -> bytes:
     _write_balances(book, sheets["Balances"], plan.closures)
     for name, table, frozen in _plain_tables(plan):
         write_table(book, sheets[name], table, frozen=frozen, header=0 if name == "Flat list" else 1)
-    for table in _answer_tables(answers):
+    for table in answer_tables(answers):
         write_table(book, sheets[table.title], table, frozen=1 if table.name == IN_WORDS else 3)
     _mark(book, sheets["Limits"], plan.limits, "state", BINDING)
     _mark_full(book, sheets["Recovery load"], plan.recovery)
@@ -54,7 +54,7 @@ def workbook_bytes(plan: Plan, answers: tuple[Answer, ...] = ()) -> bytes:
 def sheet_names(plan: Plan, answers: tuple[Answer, ...] = ()) -> list[str]:
     """The sheets in the order in which people see them."""
     stocks = ["Stocks"] if plan.stocks.rows else []
-    words, *around = [table.title for table in _answer_tables(answers)] or [""]
+    words, *around = [table.title for table in answer_tables(answers)] or [""]
     supply = [
         OVERVIEW,
         *([words] if words else []),
@@ -70,7 +70,7 @@ def sheet_names(plan: Plan, answers: tuple[Answer, ...] = ()) -> list[str]:
     return [*supply, "Money", "Prices", "Limits", *around, "Reduced costs", "Inputs as used", "Audit", "Flat list"]
 
 
-def _answer_tables(answers: tuple[Answer, ...]) -> list[Table]:
+def answer_tables(answers: tuple[Answer, ...]) -> list[Table]:
     """The answers in words, then their tables, each of which gets a sheet under its title."""
     if not answers:
         return []

@@ -66,18 +66,21 @@ def one_line(text: object) -> str:
 
 
 class Book:
-    """A workbook in memory: sheets are made first, in the order in which people see them."""
+    """A workbook in memory: sheets are made first, in the order in which people see them.
 
-    def __init__(self, plan: Plan) -> None:
+    `title` stands at the edge of every page; that of the plan's scenario if not given.
+    """
+
+    def __init__(self, plan: Plan, title: str = "") -> None:
         from olefinlp import __version__
 
-        self.plan = plan
-        self.title = one_line(plan.scenario.title)
+        title = title or plan.scenario.title
+        self.title = one_line(title)
         self._memory = io.BytesIO()
         self.workbook: Any = xlsxwriter.Workbook(self._memory, copy.deepcopy(OPTIONS))  # it writes into them
         self.workbook.set_properties(
             {
-                "title": clean(plan.scenario.title)[:200],
+                "title": clean(title)[:200],
                 "subject": clean(f"Monthly plan of {plan.scenario.plant.name}")[:200],
                 "author": f"olefinlp {__version__}",
                 "comments": "Planning aid; not for operating limits",

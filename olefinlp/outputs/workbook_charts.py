@@ -60,7 +60,7 @@ def quantity_chart(book: Book, ranges: Ranges, title: str, unit: str) -> Any:
     chart.set_x_axis(
         {"name": unit, "name_font": FONT | {"bold": False}, "min": 0, "label_position": "high", "line": {"none": True}, **numbers}
     )
-    _finish(chart, title, legend=len(ranges.months) > 1)
+    finish(chart, title, legend=len(ranges.months) > 1)
     return chart
 
 
@@ -84,7 +84,7 @@ def load_chart(book: Book, ranges: Ranges, title: str, limit: int) -> Any:
     )
     numbers = {"min": 0, "num_format": "0%", "num_font": FONT, "major_gridlines": {"visible": True, "line": {"color": GRID}}}
     chart.set_y_axis({"name": "% of maximum", "name_font": FONT | {"bold": False}, **numbers})
-    _finish(chart, title, legend=len(ranges.months) > 1)
+    finish(chart, title, legend=len(ranges.months) > 1)
     return chart
 
 
@@ -98,7 +98,8 @@ def _series(ranges: Ranges, column: int, shade: str) -> dict[str, Any]:
     }
 
 
-def _finish(chart: Any, title: str, legend: bool) -> None:
+def finish(chart: Any, title: str, legend: bool) -> None:
+    """Title, legend and frame, the same for every chart."""
     chart.set_title({"name": title, "name_font": {"name": "Arial", "size": 11, "bold": True}, "overlay": False})
     chart.set_legend({"position": "bottom", "font": FONT} if legend else {"none": True})
     chart.set_chartarea({"border": {"color": GRID}})
