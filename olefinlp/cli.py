@@ -30,6 +30,7 @@ from olefinlp.cli_support import (
     print_findings,
     read,
     refuse_option,
+    say_answer,
     say_written,
     scenario_path,
     shown_path,
@@ -199,8 +200,6 @@ def curve(
     from olefinlp.answers.ratio_curve import ratio_curve
     from olefinlp.lp.certificate import CertificateError
     from olefinlp.lp.neighbours import NeighbourError
-    from olefinlp.outputs.answer_files import answer_text, write_answer, write_answer_csv
-    from olefinlp.outputs.files import OutputError
 
     made = planned(scenario, price_case, None)
     try:
@@ -215,16 +214,7 @@ def curve(
         stop(str(error), EXIT_INPUT)
     except (CertificateError, NeighbourError) as error:
         stop(f"{error}\n{NOT_PROVEN}", EXIT_FAILED)
-    typer.echo(answer_text(found))
-    try:
-        if output:
-            write_answer(found, output)
-        if csv_file:
-            write_answer_csv(found, csv_file)
-    except OutputError as error:
-        stop(str(error), EXIT_OUTPUT)
-    if output or csv_file:
-        note("\nwritten: " + ", ".join(shown_path(p) for p in (output, csv_file) if p))
+    say_answer(found, output, csv_file)
 
 
 app.command()(cli_cases.cases)

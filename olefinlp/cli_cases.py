@@ -17,6 +17,7 @@ from olefinlp.cli_support import (
     note,
     planned,
     print_findings,
+    say_answer,
     say_written,
     shown_path,
     stop,
@@ -184,9 +185,7 @@ def bridge(
     a, b, names = _two_plans(first, second, cases_file, scenario)
     from olefinlp.answers.bridge import bridge as bridge_between
     from olefinlp.lp.certificate import CertificateError
-    from olefinlp.outputs.answer_files import answer_text, write_answer_csv
     from olefinlp.outputs.bridge_workbook import write_bridge
-    from olefinlp.outputs.files import OutputError
 
     try:
         found = bridge_between(a, b, order=ORDERS[order], names=names)
@@ -194,16 +193,7 @@ def bridge(
         stop(str(error), EXIT_INPUT)
     except (CertificateError, ArithmeticError) as error:
         stop(f"{error}\n{NOT_PROVEN}", EXIT_FAILED)
-    typer.echo(answer_text(found))
-    try:
-        if output:
-            write_bridge(found, output)
-        if csv_file:
-            write_answer_csv(found, csv_file)
-    except OutputError as error:
-        stop(str(error), EXIT_OUTPUT)
-    if output or csv_file:
-        note("\nwritten: " + ", ".join(shown_path(p) for p in (output, csv_file) if p))
+    say_answer(found, output, csv_file, write_bridge)
 
 
 def _two_plans(

@@ -46,6 +46,25 @@ def say_written(written: list[str], failed: list[str]) -> None:
         stop("\n".join(failed), EXIT_OUTPUT)
 
 
+def say_answer(
+    found: Answer, output: Path | None, csv_file: Path | None, write: Callable[[Answer, Path], object] | None = None
+) -> None:
+    """Print one answer, write it where it is wanted, and name the files; `write` makes its workbook, if not the usual one."""
+    from olefinlp.outputs.answer_files import answer_text, write_answer, write_answer_csv
+    from olefinlp.outputs.files import OutputError
+
+    typer.echo(answer_text(found))
+    try:
+        if output:
+            (write or write_answer)(found, output)
+        if csv_file:
+            write_answer_csv(found, csv_file)
+    except OutputError as error:
+        stop(str(error), EXIT_OUTPUT)
+    if output or csv_file:
+        note("\nwritten: " + ", ".join(shown_path(p) for p in (output, csv_file) if p))
+
+
 def answer_options(parcels: str | None, room: float, json_file: str | None) -> tuple[list[float] | None, float]:
     """Sizes of parcels (kt) and share of the margin for the answers; ends the command when one does not read."""
     try:

@@ -221,7 +221,7 @@ def test_what_is_no_bridge_is_refused_and_files_are_whole(strong: Bridge, month:
 def test_the_sheets_can_stand_in_a_larger_workbook(bridges: dict[str, Bridge]) -> None:
     """Two bridges in one book, after a sheet of another; each one's formulas stay on its own sheets."""
     first, second = bridges["prices"], bridges["limits first"]
-    book = Book(first.second)
+    book = Book(first.second.scenario)
     book.sheet("Comparison")
     given = {name: book.sheet(name) for name in bridge_sheet_names("1 ")}
     assert write_bridge_sheets(book, first, "1 ", given) == ("1 Bridge", "1 Price effects", "1 What changed")

@@ -7,6 +7,7 @@ import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -385,7 +386,7 @@ def by_scipy(lps: Sequence[LabelledLp], shared: list[int], weights: Sequence[flo
     Columns: shared, own columns of each case, η, u. Not built by the package: its columns are not shared by rows."""
     own = [j for j in range(len(lps[0].columns)) if j not in set(shared)]
     count, n = len(lps), len(own)
-    matrices = [csr_matrix((lp.value, lp.index, lp.starts), shape=(len(lp.rows), len(lp.columns))) for lp in lps]
+    matrices = [csr_matrix((lp.value, lp.index, lp.starts), copy=True, shape=(len(lp.rows), len(lp.columns))) for lp in lps]
     rows = hstack([vstack([a[:, shared] for a in matrices]), block_diag([a[:, own] for a in matrices])])
     rows = hstack([rows, csr_matrix((rows.shape[0], 1 + count))])
     costs = np.zeros((count, len(shared) + n * count))
@@ -688,8 +689,9 @@ def test_a_decision_is_worth_what_one_more_unit_of_it_is_worth_in_each_case() ->
 
 def test_decisions_that_are_possible_in_no_common_case() -> None:
     """Wheat on at least 300 acres in one case, on at most 200 in the other."""
-    one, other = farmer(1.0), farmer(1.0)
-    one.low[0], other.high[0] = 300, 200
+    lp = farmer(1.0)
+    one = replace(lp, low=np.array([300, *lp.low[1:]]))
+    other = replace(lp, high=np.array([200, *lp.high[1:]]))
     assert decide([Block("much", 0.5, one, LAND), Block("little", 0.5, other, LAND)]) is None
 
 

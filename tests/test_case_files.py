@@ -186,7 +186,7 @@ cases.csv:6 [Dear]  feeds.n_butane.spot_cargo.minn
   unknown name `minn`; here it takes: min, max, price, basis, take_or_pay, shortfall_pays, tiers, quality, note
 hint: did you mean `min`?
 cases.csv:7 [Dear]  outlets.ethylene_contract.max
-  `50.0 USD/t` is money per mass (t, lb …), but mass (t, lb …) is needed here
+  `50 USD/t` is money per mass (t, lb …), but mass (t, lb …) is needed here
 hint: see the list of units in models/README.md"""
     )
 

@@ -197,7 +197,9 @@ def test_power_bought_and_sold_without_end(tmp_path: Path) -> None:
     )
     lp = compile_model(build_model(scenario.case))
     assert solve(lp).status is Status.OPTIMAL
-    lp.cost[lp.column_at["trade", "back", "month"]] = 60.0
+    cost = lp.cost.copy()
+    cost[lp.column_at["trade", "back", "month"]] = 60.0
+    lp = replace(lp, cost=cost)
     outcome = solve(lp)
     assert outcome.status is Status.UNBOUNDED
     assert EXIT_CODES[outcome.status] == 4

@@ -79,7 +79,7 @@ class Independent:
     """A program for scipy, every finite side of a row as one line a · x ≤ b."""
 
     def __init__(self, lp: LabelledLp) -> None:
-        matrix = csr_array((lp.value, lp.index, lp.starts), shape=(len(lp.rows), len(lp.columns)))
+        matrix = csr_array((lp.value, lp.index, lp.starts), copy=True, shape=(len(lp.rows), len(lp.columns)))
         high, low = np.flatnonzero(np.isfinite(lp.row_high)), np.flatnonzero(np.isfinite(lp.row_low))
         self.matrix = vstack([matrix[high], -matrix[low]]).tocsr()
         self.bounds = np.concatenate([lp.row_high[high], -lp.row_low[low]])

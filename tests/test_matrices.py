@@ -32,7 +32,7 @@ def by_scipy(lp: LabelledLp, method: str) -> Solution:
     """
     written = np.concatenate([side[np.isfinite(side)] for side in (lp.row_low, lp.row_high, lp.low, lp.high)])
     scale = 2.0 ** round(math.log2(1000 / np.abs(written).max()))
-    matrix = csr_matrix((lp.value, lp.index, lp.starts), shape=(len(lp.rows), len(lp.columns)))
+    matrix = csr_matrix((lp.value, lp.index, lp.starts), copy=True, shape=(len(lp.rows), len(lp.columns)))
     equal = np.flatnonzero(lp.row_low == lp.row_high)
     most = np.flatnonzero(np.isfinite(lp.row_high) & (lp.row_low != lp.row_high))
     least = np.flatnonzero(np.isfinite(lp.row_low) & (lp.row_low != lp.row_high))
@@ -66,7 +66,7 @@ def test_scipy_finds_the_same_optimum(every_plan: Plan, method: str) -> None:
 def test_the_duals_recomputed_are_the_reduced_costs(every_plan: Plan) -> None:
     """c − Aᵀy by a matrix product of its own is what the solver calls reduced costs, to rounding."""
     lp, solution = every_plan.lp, every_plan.solution
-    matrix = csr_matrix((lp.value, lp.index, lp.starts), shape=(len(lp.rows), len(lp.columns)))
+    matrix = csr_matrix((lp.value, lp.index, lp.starts), copy=True, shape=(len(lp.rows), len(lp.columns)))
     assert matrix @ solution.x == pytest.approx(lp.activity(solution.x), abs=1e-12)
     size = np.abs(lp.cost) + abs(matrix).T @ np.abs(solution.row_dual)
     assert np.abs(lp.cost - matrix.T @ solution.row_dual - solution.reduced) == pytest.approx(

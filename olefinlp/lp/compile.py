@@ -94,6 +94,10 @@ class LabelledLp:
     row_at: dict[Label, int] = field(repr=False)
     column_at: dict[Label, int] = field(repr=False)
 
+    def __post_init__(self) -> None:
+        for name in ("starts", "index", "value", "row_low", "row_high", "low", "high", "cost"):
+            getattr(self, name).setflags(write=False)  # shared by plans: nobody may sort or change them in place
+
     @functools.cached_property
     def by_row(self) -> Lines:
         """The matrix by rows."""

@@ -84,7 +84,7 @@ def bridge_bytes(source: Bridge | Answer) -> bytes:
     bridge = source.bridge if isinstance(source, BridgeAnswer) else source
     if not isinstance(bridge, Bridge):
         raise ValueError("this answer is no margin bridge")
-    book = Book(bridge.second)
+    book = Book(bridge.second.scenario)
     book.title = one_line(bridge.title)
     write_bridge_sheets(book, bridge)
     return book.to_bytes()

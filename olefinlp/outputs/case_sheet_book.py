@@ -2,22 +2,18 @@
 
 from __future__ import annotations
 
-import copy
-import io
 import math
 import textwrap
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Any
 
-import xlsxwriter
-
-from olefinlp.inputs.case_sheet_limits import SheetLimit, limit_rows
+from olefinlp.inputs.case_sheet_limits import limit_rows
 from olefinlp.inputs.case_sheet_names import COLUMN_OF, MORE_CASES, UNITS, heading_key
-from olefinlp.inputs.case_sheet_rows import SheetPrice, case_names, price_rows
+from olefinlp.inputs.case_sheet_rows import case_names, price_rows
 from olefinlp.inputs.scenario import Scenario
 from olefinlp.outputs.files import OutputError
-from olefinlp.outputs.workbook_book import FIXED_DATE, INPUT, LINE, OPTIONS, STYLES, Book, clean, letters, one_line, put
+from olefinlp.outputs.workbook_book import INPUT, LINE, STYLES, Book, letters, put
 
 AS_FIRST = "#EDEDED"
 """Colour of a blank cell of a case, which means: as the first case."""
@@ -58,49 +54,24 @@ class Field:
         return {"top": (), "text": (), "wrap": (), "name": ("indent",)}.get(self.style, ("right",))
 
 
-@dataclass
 class CaseBook(Book):
     """The workbook while it is written: its scenario, and the rows and cases of the sheet."""
 
-    scenario: Scenario
-    names: tuple[str, ...] = ()
-    prices: tuple[SheetPrice, ...] = ()
-    limits: tuple[SheetLimit, ...] = ()
-    units_at: dict[tuple[str, ...], str] = field(default_factory=dict)
-    """Units that a row offers → the range where they stand on the sheet of units."""
-    last_key: int = 0
-    """Last row of the table of units, from 1."""
+    styles = STYLES | OWN_STYLES
 
-    def __post_init__(self) -> None:
-        from olefinlp import __version__
-
-        self.names, self.prices, self.limits = case_names(self.scenario), price_rows(self.scenario), limit_rows(self.scenario)
+    def __init__(self, scenario: Scenario) -> None:
+        super().__init__(scenario)
+        self.scenario = scenario
+        self.names, self.prices, self.limits = case_names(scenario), price_rows(scenario), limit_rows(scenario)
+        self.units_at: dict[tuple[str, ...], str] = {}
+        """Units that a row offers → the range where they stand on the sheet of units."""
+        self.last_key = 0
+        """Last row of the table of units, from 1."""
         taken = [name for name in self.names if heading_key(name) in COLUMN_OF]
         if taken:
             raise OutputError(
                 f"the price case `{taken[0]}` has the name of a column of the case sheet\nhint: give it another name"
             )
-        self.title = one_line(self.scenario.title)
-        self._memory = io.BytesIO()
-        self.workbook: Any = xlsxwriter.Workbook(self._memory, copy.deepcopy(OPTIONS))
-        self.workbook.set_properties(
-            {
-                "title": clean(f"Cases of {self.scenario.title}")[:200],
-                "author": f"olefinlp {__version__}",
-                "comments": "Planning aid; not for operating limits",
-                "created": FIXED_DATE,
-            }
-        )
-        self._styles: dict[tuple[str, ...], Any] = {}
-
-    def style(self, *words: str) -> Any:
-        """The cell style of some words; what is no word of a style is a number format."""
-        if words not in self._styles:
-            properties: dict[str, Any] = {}
-            for word in words:
-                properties |= OWN_STYLES.get(word) or STYLES.get(word, {"num_format": word, "align": "right"})
-            self._styles[words] = self.workbook.add_format(properties)
-        return self._styles[words]
 
     @property
     def several_months(self) -> bool:

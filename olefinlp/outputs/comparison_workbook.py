@@ -63,7 +63,7 @@ def comparison_bytes(comparison: Comparison, answers: CaseAnswers | None = None)
     if not comparison.plans:
         raise ValueError("no case has a plan: there is nothing to compare")
     first = next(iter(comparison.plans.values()))
-    book = Book(first, f"{comparison.scenario.title}: {len(comparison.cases)} cases")
+    book = Book(first.scenario, f"{comparison.scenario.title}: {len(comparison.cases)} cases")
     tables = case_tables(comparison, answers)
     around = answer_tables(answers.around) if answers else []
     ranges = answers.ranges if answers else {}

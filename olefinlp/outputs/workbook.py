@@ -33,7 +33,7 @@ def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answ
 
 def workbook_bytes(plan: Plan, answers: tuple[Answer, ...] = ()) -> bytes:
     """The whole file in memory."""
-    book = Book(plan)
+    book = Book(plan.scenario)
     sheets = {name: book.sheet(name) for name in sheet_names(plan, answers)}
     prices, price_rows = write_prices(book, sheets["Prices"], plan)
     money = write_money(book, sheets["Money"], plan, prices, price_rows)

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 import xlsxwriter
 
 if TYPE_CHECKING:
-    from olefinlp.answers.plan import Plan
+    from olefinlp.inputs.scenario import Scenario
 
 INK, SHADE, LINE, INPUT, BINDS, ALARM = "#12344D", "#DCE6EC", "#9FB1BC", "#FFF4CE", "#F6DFC4", "#9C2F1E"
 """Colours: of headings, of header cells, of thin lines, of cells to change, of limits that bind, of what is wrong."""
@@ -68,20 +68,22 @@ def one_line(text: object) -> str:
 class Book:
     """A workbook in memory: sheets are made first, in the order in which people see them.
 
-    `title` stands at the edge of every page; that of the plan's scenario if not given.
+    `title` stands at the edge of every page; that of the scenario if not given.
     """
 
-    def __init__(self, plan: Plan, title: str = "") -> None:
+    styles = STYLES
+
+    def __init__(self, scenario: Scenario, title: str = "") -> None:
         from olefinlp import __version__
 
-        title = title or plan.scenario.title
+        title = title or scenario.title
         self.title = one_line(title)
         self._memory = io.BytesIO()
         self.workbook: Any = xlsxwriter.Workbook(self._memory, copy.deepcopy(OPTIONS))  # it writes into them
         self.workbook.set_properties(
             {
                 "title": clean(title)[:200],
-                "subject": clean(f"Monthly plan of {plan.scenario.plant.name}")[:200],
+                "subject": clean(f"Monthly plan of {scenario.plant.name}")[:200],
                 "author": f"olefinlp {__version__}",
                 "comments": "Planning aid; not for operating limits",
                 "created": FIXED_DATE,
@@ -90,14 +92,14 @@ class Book:
         self._styles: dict[tuple[str, ...], Any] = {}
 
     def style(self, *words: str) -> Any:
-        """The cell style of some of `STYLES`; any other word is a number format.
+        """The cell style of some of `styles`; any other word is a number format.
 
         The same words give the same style, so that each is written once.
         """
         if words not in self._styles:
             properties: dict[str, Any] = {}
             for word in words:
-                properties |= STYLES.get(word, {"num_format": word, "align": "right"})
+                properties |= self.styles.get(word, {"num_format": word, "align": "right"})
             self._styles[words] = self.workbook.add_format(properties)
         return self._styles[words]
 
