@@ -7,7 +7,6 @@ import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
