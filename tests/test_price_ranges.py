@@ -13,7 +13,8 @@ from plants import write
 from olefinlp import make_plan, read_scenario
 from olefinlp.answers.curves import cost_direction
 from olefinlp.answers.plan import Plan
-from olefinlp.answers.price_ranges import AMOUNT, NUMBER, SHARE, PriceRange, price_ranges, typed_of
+from olefinlp.answers.price_ranges import PriceRange, price_ranges
+from olefinlp.inputs.prices import AMOUNT, NUMBER, SHARE, typed_of
 from olefinlp.lp.solver import solve
 
 SMALL = 1e-4

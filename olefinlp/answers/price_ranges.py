@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from olefinlp.answers.curves import cost_direction
+from olefinlp.inputs.prices import NUMBER, SHARE, typed_of
 from olefinlp.lp.neighbours import NeighbourError
 from olefinlp.lp.steps import Point, side
 
@@ -20,8 +21,6 @@ if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
     from olefinlp.inputs.prices import Price
 
-NUMBER, SHARE, AMOUNT = "number", "share", "amount"
-"""What of a price a person can type: its number, the share of the price that it leans on, the amount added to that."""
 SAME = 1e-7
 
 
@@ -49,15 +48,6 @@ class PriceRange:
     low: float
     high: float
     looked: tuple[float, float]
-
-
-def typed_of(price: Price) -> tuple[str, float, str, float]:
-    """What of a price is typed: kind, number, its unit, and the effective price per unit of it (0 for a share)."""
-    if not price.of:
-        return NUMBER, price.number, price.unit, price.factor
-    if price.plus and price.times == 1.0:
-        return AMOUNT, price.plus, price.unit_used, 1.0
-    return SHARE, price.times, "fraction", 0.0
 
 
 def price_ranges(plan: Plan) -> tuple[PriceRange, ...]:

@@ -113,7 +113,7 @@ def case_set(scenario: Scenario, written: Sequence[WrittenCase], findings: Findi
     cells = {one.place.file for one in written} | ({scenario.price_table.file} if scenario.price_table else set())
     for number, (one, weight) in enumerate(zip(written, weights, strict=True)):
         own = Findings()
-        changed = _case_scenario(scenario, one, own)
+        changed = case_scenario(scenario, one, own)
         stops = number == 0 or any(f.place.file in cells - {scenario.document.file} for f in own.errors)
         for finding in own if stops else own.warnings:
             if finding not in findings.items:
@@ -158,7 +158,8 @@ def _weights(written: Sequence[WrittenCase], findings: Findings) -> list[float]:
     return [(one.weight or 0.0) / total for one in written]
 
 
-def _case_scenario(scenario: Scenario, one: WrittenCase, findings: Findings) -> Scenario | None:
+def case_scenario(scenario: Scenario, one: WrittenCase, findings: Findings) -> Scenario | None:
+    """The scenario of one written case; None with findings where it cannot be one."""
     document = _changed(scenario, one, findings)
     _check_items(scenario, one, findings)
     return scenario.as_case(one.name, document, {**scenario.given, **one.prices}, findings)

@@ -21,6 +21,8 @@ from olefinlp.inputs.yaml_files import Path_
 
 MONTH = r"\d{4}-(0[1-9]|1[0-2])"
 LAST_WORDS = ("price", "cost")
+NUMBER, SHARE, AMOUNT = "number", "share", "amount"
+"""What of a price a person can type: its number, the share of the price that it leans on, the amount added to that."""
 
 
 @dataclass(frozen=True)
@@ -61,6 +63,15 @@ class Price:
     basis: str
     source: str
     place: Place
+
+
+def typed_of(price: Price) -> tuple[str, float, str, float]:
+    """What of a price is typed: kind, number, its unit, and the effective price per unit of it (0 for a share)."""
+    if not price.of:
+        return NUMBER, price.number, price.unit, price.factor
+    if price.plus and price.times == 1.0:
+        return AMOUNT, price.plus, price.unit_used, 1.0
+    return SHARE, price.times, "fraction", 0.0
 
 
 def price_items_of(scenario: Scenario) -> dict[str, PriceItem]:

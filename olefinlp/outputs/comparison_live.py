@@ -7,7 +7,8 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
-from olefinlp.answers.price_ranges import AMOUNT, NUMBER, SHARE, PriceRange
+from olefinlp.answers.price_ranges import PriceRange
+from olefinlp.inputs.prices import AMOUNT, NUMBER, SHARE
 from olefinlp.outputs.workbook_book import MAY, Book, cell, put, put_formula
 from olefinlp.outputs.workbook_tables import LINE_HEIGHT, Grid
 
