@@ -27,7 +27,10 @@ class Chart:
 
 @dataclass(frozen=True)
 class Answer:
-    """An answer: `tables` (the first is the main one), `sentences`, and a `note` on its use."""
+    """An answer: `tables` (the first is the main one), `sentences`, and a `note` on its use.
+
+    `charts` are further pictures of the main table, after `chart`.
+    """
 
     name: str
     title: str
@@ -35,6 +38,7 @@ class Answer:
     sentences: tuple[str, ...]
     note: str = ""
     chart: Chart | None = None
+    charts: tuple[Chart, ...] = ()
 
     @property
     def table(self) -> Table:

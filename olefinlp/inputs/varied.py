@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import copy
 import difflib
+import re
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 from typing import Any
@@ -18,15 +19,25 @@ from olefinlp.inputs.fields import PriceWritten
 from olefinlp.inputs.findings import Findings, Place, near_name
 from olefinlp.inputs.plant import Mode, Plant, YieldRow
 from olefinlp.inputs.plant_file import PlantFile
-from olefinlp.inputs.prices import AMOUNT, NUMBER, PriceGiven, item_name, typed_of
+from olefinlp.inputs.prices import AMOUNT, MONTH, NUMBER, PriceGiven, item_name, typed_of
 from olefinlp.inputs.scenario import Scenario, set_value
+from olefinlp.inputs.scenario_file import ScenarioFile
 from olefinlp.inputs.units import Quantity, UnitError, parse_quantity, parse_unit
 from olefinlp.inputs.validate import validate
 
 PRICE, SCENARIO, PLANT = "price", "scenario", "plant"
+OTHER_MONTHS = "other_months"
 MODE_NUMBERS = {"charge": "t/h", "run_length": "h", "decoke": "h", "fired_heat": "GJ/t LHV"}
 CALLED = Place("sweep")
 """Where a varied number is written: in the definition of a sweep."""
+
+
+class NoNumber(ValueError):
+    """There is no number at a path, or none that can be varied so; `message` says why, `hint` what to write."""
+
+    def __init__(self, message: str, hint: str = "") -> None:
+        super().__init__(f"{message}; {hint}" if hint else message)
+        self.message, self.hint = message, hint
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,7 +68,7 @@ class Varied:
 def find_varied(scenario: Scenario, path: str, month: str = "") -> Varied:
     """The number at a path.
 
-    Raises `ValueError` with the nearest path where there is none, and where a path holds no number.
+    Raises `NoNumber`, a `ValueError`, with the nearest path where there is none, and where a path holds no number.
 
     >>> from olefinlp import read_scenario
     >>> march = read_scenario("scenarios/brackwater_2031_03.yaml")
@@ -66,24 +77,36 @@ def find_varied(scenario: Scenario, path: str, month: str = "") -> Varied:
     """
     months = [period.name for period in scenario.periods]
     if month and month not in months:
-        raise ValueError(f"`{month}` is not a month of this scenario; {near_name(month, months)}")
+        raise NoNumber(f"`{month}` is not a month of this scenario", near_name(month, months))
     chosen = [month] if month else months
     item = item_name(path.split("."))
     if (item, months[0]) in scenario.case.prices:
         prices = [scenario.case.prices[item, one] for one in chosen]
         typed = [typed_of(price) for price in prices]
         if len({(kind, unit) for kind, _, unit, _ in typed}) > 1:
-            raise ValueError(f"`{path}` is written in different ways from month to month: vary one month of it")
+            raise NoNumber(f"`{path}` is written in different ways from month to month", "vary one month of it")
         return Varied(item, PRICE, typed[0][2], tuple(zip(chosen, (t[1] for t in typed), strict=True)), month)
     found = _this_month(scenario, path, chosen) or _in_scenario(scenario, path, chosen)
     if found:
         return replace(found, month=month)
     found = _in_plant(scenario.plant, path)
     if found is None:
-        raise ValueError(f"`{path}` is no number of the scenario or its plant; {_nearest(path, known_paths(scenario))}")
+        raise _no_number(scenario, path, months)
     if month:
-        raise ValueError(f"`{path}` belongs to the plant, whatever the month")
+        raise NoNumber(f"`{path}` belongs to the plant, whatever the month")
     return found
+
+
+def _no_number(scenario: Scenario, path: str, months: list[str]) -> NoNumber:
+    """Why there is no number at a path."""
+    above, _, last = path.rpartition(".")
+    if last in (*months, OTHER_MONTHS) and _at(scenario.document.data, above) is not None:
+        hint = "name the month apart from the path" if last in months else "vary one month after the other"
+        return NoNumber(f"`{path}` ends in a month", hint)
+    value = _at(scenario.document.data, path) or _at(scenario.plant.document.data, path)
+    if value is not None and not isinstance(value, dict | list):
+        return NoNumber(f"`{path}` is `{value}`, no number")
+    return NoNumber(f"`{path}` is no number of the scenario or its plant", _nearest(path, known_paths(scenario)))
 
 
 def _nearest(path: str, known: Iterable[str]) -> str:
@@ -102,7 +125,7 @@ def scenario_at(scenario: Scenario, values: Mapping[Varied, float], percent: Ite
     prices: dict[tuple[str, str], PriceGiven] = {}
     changes: list[Change] = []
     for varied, value in values.items():
-        for month, number in _new(varied, value, varied in by_percent):
+        for month, number in _written_for(varied, _new(varied, value, varied in by_percent)):
             if varied.kind == PRICE:
                 prices[varied.path, month] = _given(scenario, varied, month, number)
             elif varied.kind == SCENARIO:
@@ -118,6 +141,12 @@ def scenario_at(scenario: Scenario, values: Mapping[Varied, float], percent: Ite
 def _new(varied: Varied, value: float, percent: bool) -> list[tuple[str, float]]:
     """The new number of each month."""
     return [(month, today * (1 + value / 100) if percent else value) for month, today in varied.today]
+
+
+def _written_for(varied: Varied, new: list[tuple[str, float]]) -> list[tuple[str, float]]:
+    """A number of the scenario that is the same in all its months is written once: some take no value a month."""
+    once = varied.kind == SCENARIO and not varied.month and len({number for _, number in new}) == 1
+    return [("", new[0][1])] if once else new
 
 
 def _given(scenario: Scenario, varied: Varied, month: str, number: float) -> PriceGiven:
@@ -155,6 +184,8 @@ def _this_month(scenario: Scenario, path: str, months: list[str]) -> Varied | No
 
 def _in_scenario(scenario: Scenario, path: str, months: list[str]) -> Varied | None:
     """A number that the scenario file writes."""
+    if path.rpartition(".")[2] in (*(period.name for period in scenario.periods), OTHER_MONTHS):
+        return None
     value = _at(scenario.document.data, path)
     by_month = [(month, _month_value(value, month)) for month in months] if value is not None else []
     read = [(month, _number(one)) for month, one in by_month]
@@ -162,8 +193,20 @@ def _in_scenario(scenario: Scenario, path: str, months: list[str]) -> Varied | N
         return None
     units = {one[1] for _, one in read if one}
     if len(units) > 1:
-        raise ValueError(f"`{path}` is written in different units from month to month: vary one month of it")
+        raise NoNumber(f"`{path}` is written in different units from month to month", "vary one month of it")
+    one_of_several = len(months) < len(scenario.periods) and not isinstance(value, dict)
+    if one_of_several and not _takes_months(scenario, path, months[0], value):
+        raise NoNumber(f"`{path}` is one number for all months")
     return Varied(path, SCENARIO, units.pop(), tuple((month, one[0]) for month, one in read if one))
+
+
+def _takes_months(scenario: Scenario, path: str, month: str, value: Any) -> bool:
+    """Whether a number that is written once could be written for each month."""
+    findings = Findings()
+    data = copy.deepcopy(scenario.document.data)
+    set_value(data, tuple(path.split(".")), {month: value, OTHER_MONTHS: value}, findings, scenario.document)
+    validate(replace(scenario.document, data=data), ScenarioFile, findings)
+    return not findings.errors
 
 
 def _at(data: Any, path: str) -> Any:
@@ -180,7 +223,7 @@ def _at(data: Any, path: str) -> Any:
 
 def _month_value(value: Any, month: str) -> Any:
     if isinstance(value, dict):
-        return value.get(month, value.get("other_months"))
+        return value.get(month, value.get(OTHER_MONTHS))
     return value
 
 
@@ -224,11 +267,11 @@ def plant_at(plant: Plant, values: Mapping[Varied, float]) -> Plant:
     What a yield gains, the other yields of its row lose in proportion, so that they still sum to what they did.
     Raises `InputError` where plant.yaml would not be valid.
     """
+    shares: dict[tuple[str, str, str], dict[str, float]] = {}
     for varied, value in values.items():
         head, *rest = varied.path.split(".")
         if head == "yields":
-            key = (rest[0], rest[1], rest[2])
-            plant = replace(plant, yields={**plant.yields, key: _with_share(plant.yields[key], rest[3], value / 100)})
+            shares.setdefault((rest[0], rest[1], rest[2]), {})[rest[3]] = value / 100
         elif head == "recovery_units" and rest[1:] == ["capacity"]:
             unit = plant.units[rest[0]]
             quantity = Quantity(value, parse_unit(varied.unit), f"{shortest(value)} {varied.unit}")
@@ -237,14 +280,18 @@ def plant_at(plant: Plant, values: Mapping[Varied, float]) -> Plant:
             plant = replace(plant, modes=tuple(_with_number(mode, rest, value) for mode in plant.modes))
         else:
             plant = _with_written(plant, varied, value)
+    if shares:
+        rows = {key: _with_shares(plant.yields[key], new) for key, new in shares.items()}
+        plant = replace(plant, yields={**plant.yields, **rows})
     return plant
 
 
-def _with_share(row: YieldRow, component: str, share: float) -> YieldRow:
-    rest = sum(value for name, value in row.shares.items() if name != component)
-    scale = (rest + row.shares[component] - share) / rest if rest else 1.0
-    shares = {name: share if name == component else value * scale for name, value in row.shares.items()}
-    return replace(row, shares=shares)
+def _with_shares(row: YieldRow, new: Mapping[str, float]) -> YieldRow:
+    """All new yields of a row together: one after the other, the second would change the first again."""
+    rest = sum(value for name, value in row.shares.items() if name not in new)
+    gained = sum(value - row.shares[name] for name, value in new.items())
+    scale = (rest - gained) / rest if rest else 1.0
+    return replace(row, shares={name: new.get(name, value * scale) for name, value in row.shares.items()})
 
 
 def _with_number(mode: Mode, rest: list[str], value: float) -> Mode:
@@ -283,6 +330,9 @@ def known_paths(scenario: Scenario) -> Iterator[str]:
 def _numbers(data: Any, path: tuple[str, ...]) -> Iterator[str]:
     """Paths of everything that reads as a number."""
     if isinstance(data, dict):
+        if data and all(name == OTHER_MONTHS or re.fullmatch(MONTH, str(name)) for name in data):
+            yield from [".".join(path)] if all(_number(value) for value in data.values()) else []
+            return
         for name, value in data.items():
             yield from _numbers(value, (*path, str(name)))
     elif isinstance(data, list):

@@ -188,7 +188,7 @@ class Neighbours:
 
     def _outcome(self) -> tuple[Floats, Floats] | None:
         """Values and duals as the solver's wrapper finds them from nothing."""
-        outcome = _from_nothing(self.solver)
+        outcome = from_nothing(self.solver)
         if outcome.status is Status.INFEASIBLE:
             return None
         if outcome.solution is None:
@@ -206,7 +206,7 @@ class Neighbours:
             highs.changeColBounds(column, terms.low[first + column] * scale, terms.high[first + column] * scale)
 
 
-def _from_nothing(solver: Solver) -> Outcome:
+def from_nothing(solver: Solver) -> Outcome:
     """Solved without a basis; another way is tried where the solver comes to no verdict."""
     outcome = Outcome(Status.FAILED, "not solved")
     _, before = solver.highs.getOptionValue("simplex_strategy")
@@ -284,7 +284,7 @@ class RatioNeighbours:
         self.solves += 1
         outcome = self.solver.solve()
         if outcome.solution is None or not certify(changed, outcome.solution).holds:
-            outcome = _from_nothing(self.solver)  # a warm start can end slightly off
+            outcome = from_nothing(self.solver)  # a warm start can end slightly off
         if outcome.solution is None:
             # far from what a plant can do a solver may not know: then the elastic copy decides
             if outcome.status is Status.INFEASIBLE or clashes(changed):

@@ -10,6 +10,7 @@ import contextlib
 import math
 import os
 import sys
+import threading
 from collections.abc import Iterator
 from dataclasses import dataclass
 from enum import Enum
@@ -78,22 +79,29 @@ def solver_version() -> str:
     return f"HiGHS {highspy.Highs.version(_quiet_highs())}" if hasattr(highspy.Highs, "version") else "HiGHS"
 
 
+_ASIDE = threading.RLock()
+
+
 @contextlib.contextmanager
 def _no_banner() -> Iterator[None]:
-    """The first solver of a process prints a banner whatever the options; standard output is ours."""
-    sys.stdout.flush()
-    try:
-        kept = os.dup(1)
-    except OSError:  # no standard output at all
-        yield
-        return
-    try:
-        with open(os.devnull, "w") as nowhere:
-            os.dup2(nowhere.fileno(), 1)
+    """The first solver of a process prints a banner whatever the options; standard output is ours.
+
+    One thread at a time: two that put it aside and back in turns would lose it.
+    """
+    with _ASIDE:
+        sys.stdout.flush()
+        try:
+            kept = os.dup(1)
+        except OSError:  # no standard output at all
             yield
-    finally:
-        os.dup2(kept, 1)
-        os.close(kept)
+            return
+        try:
+            with open(os.devnull, "w") as nowhere:
+                os.dup2(nowhere.fileno(), 1)
+                yield
+        finally:
+            os.dup2(kept, 1)
+            os.close(kept)
 
 
 def _quiet_highs() -> Any:

@@ -15,7 +15,10 @@ from olefinlp.outputs.text import INDENT, aligned, number, significant
 
 MOST_ROWS = 60
 FORMATS = {"quantity": "#,##0.00", "price": "#,##0.00", "money": "#,##0.0", "share": "0.0%", "hours": "#,##0", "count": "0"}
+FORMATS["number"] = "#,##0.0000"
 INK, MARK = "#1F4E5F", "#B4581A"
+CHART_ROWS = 20
+"""Rows from the top of one chart to that of the next."""
 
 
 def answer_text(answer: Answer) -> str:
@@ -66,7 +69,7 @@ def answer_bytes(answer: Answer) -> bytes:
         first = _write_words(book, sheet, answer) if position == 0 else 0
         write_plain_table(book, sheet, table, styles, first)
         if position == 0 and answer.chart:
-            _write_chart(book, sheet, answer, answer.chart, first + len(table.rows) + 3)
+            _write_charts(book, sheet, answer, (answer.chart, *answer.charts), first + len(table.rows) + 3)
     book.close()
     return memory.getvalue()
 
@@ -101,23 +104,29 @@ def write_plain_table(book: Any, sheet: Any, table: Table, styles: dict[str, Any
     sheet.set_footer("&LPlanning aid; not for operating limits&RPage &P of &N")
 
 
-def _write_chart(book: Any, sheet: Any, answer: Answer, chart: Chart, below: int) -> None:
-    """The curve over points on a sheet of their own, with a mark at today's value."""
-    points = _points(answer, chart)
+def _write_charts(book: Any, sheet: Any, answer: Answer, charts: tuple[Chart, ...], below: int) -> None:
+    """Charts below each other, over points on a sheet of their own."""
     data = book.add_worksheet("Chart points")
+    for k, chart in enumerate(charts):
+        _write_chart(book, sheet, data, answer, chart, below + CHART_ROWS * k, 3 * k)
+
+
+def _write_chart(book: Any, sheet: Any, data: Any, answer: Answer, chart: Chart, below: int, column: int) -> None:
+    """The curve over its points, which stand in two columns, with a mark at today's value."""
+    points = _points(answer, chart)
     head = book.add_format({"bold": True, "bottom": 1})
-    data.set_column(0, 1, 24)
-    for j, text in enumerate((chart.x_unit, chart.y_unit)):
+    data.set_column(column, column + 1, 24)
+    for j, text in enumerate((chart.x_unit, chart.y_unit), column):
         data.write_string(0, j, text, head)
     top = max((y for _, y in points), default=1.0)
     bottom = min(0.0 if chart.kind == "steps" else top, *(y for _, y in points))
     for i, (x, y) in enumerate([*points, (chart.today, bottom), (chart.today, top)], 1):
-        data.write_number(i, 0, x)
-        data.write_number(i, 1, y)
+        data.write_number(i, column, x)
+        data.write_number(i, column + 1, y)
     last = len(points)
     picture = book.add_chart({"type": "scatter", "subtype": "straight"})
-    picture.add_series(_series(chart.y_unit or "value", 1, last, {"color": INK, "width": 2.25}))
-    picture.add_series(_series("today", last + 1, last + 2, {"color": MARK, "dash_type": "dash"}))
+    picture.add_series(_series(chart.y_unit or "value", 1, last, column, {"color": INK, "width": 2.25}))
+    picture.add_series(_series("today", last + 1, last + 2, column, {"color": MARK, "dash_type": "dash"}))
     picture.set_title({"name": chart.title, "name_font": {"size": 12}})
     edges = [x for x, _ in points]
     picture.set_x_axis({"name": chart.x_unit, "min": min(edges), "max": max(edges), "major_gridlines": {"visible": False}})
@@ -127,11 +136,11 @@ def _write_chart(book: Any, sheet: Any, answer: Answer, chart: Chart, below: int
     sheet.insert_chart(below, 0, picture)
 
 
-def _series(name: str, first: int, last: int, line: dict[str, Any]) -> dict[str, Any]:
+def _series(name: str, first: int, last: int, column: int, line: dict[str, Any]) -> dict[str, Any]:
     return {
         "name": name,
-        "categories": ["Chart points", first, 0, last, 0],
-        "values": ["Chart points", first, 1, last, 1],
+        "categories": ["Chart points", first, column, last, column],
+        "values": ["Chart points", first, column + 1, last, column + 1],
         "line": line,
     }
 
