@@ -19,7 +19,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from olefinlp.answers.sweep import DEFAULT, THREADS, Cluster, Job, Sweep, counted, gathered, job_of, run_sweep
+from olefinlp.answers.sweep import THREADS, Cluster, Job, Sweep, counted, gathered, job_of, run_sweep
+from olefinlp.answers.sweep_readings import DEFAULT
 from olefinlp.lp.sweep import BLOCK, NO_CASE, SolvedBlock
 from olefinlp.outputs.files import OutputError, write_bytes, write_text
 
@@ -67,9 +68,8 @@ def description(job: Job, form: str) -> dict[str, Any]:
     digest = hashlib.sha256(json.dumps(head, sort_keys=True).encode("utf-8"))
     digest.update(np.ascontiguousarray(cases.values).tobytes())
     digest.update("\n".join(cases.labels).encode("utf-8"))
-    digest.update(
-        repr([(name, getattr(job.base.lp, name).tobytes()) for name in ("cost", "value", "row_low", "row_high")]).encode()
-    )
+    for name in ("cost", "value", "row_low", "row_high"):
+        digest.update(getattr(job.base.lp, name).tobytes())
     return head | {"hash": digest.hexdigest()}
 
 
