@@ -15,8 +15,8 @@ def frontier(
     goal: Annotated[
         str,
         typer.Argument(
-            help="What to trade against margin, by its path in the files: utilities.<trade>, feeds.<feed>, feeds.<feed>.<source>, "
-            "outlets.<outlet>, cuts.<cut> or recovery_units.<unit>; all months together."
+            help="What to trade against margin, by its path in the files: utilities.<trade>, feeds.<feed>, "
+            "feeds.<feed>.<source>, outlets.<outlet>, cuts.<cut> or recovery_units.<unit>; all months together."
         ),
     ],
     low: Annotated[
@@ -26,7 +26,8 @@ def frontier(
         float | None, typer.Option("--to", help="Last weight; if left out, until the quantity falls no more.")
     ] = None,
     limit: Annotated[
-        float | None, typer.Option("--at-most", metavar="QUANTITY", help="Only the best margin with so much of it at most (kt …).")
+        float | None,
+        typer.Option("--at-most", metavar="QUANTITY", help="Only the best margin with so much of it at most (kt …)."),
     ] = None,
     price_case: Annotated[str | None, typer.Option(help="Another price case of the scenario's price table.")] = None,
     output: Annotated[Path | None, typer.Option("--output", "-o", help="Workbook with table and charts.")] = None,

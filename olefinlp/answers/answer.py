@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from olefinlp.answers.tables import Table
@@ -38,7 +38,7 @@ class Answer:
     sentences: tuple[str, ...]
     note: str = ""
     chart: Chart | None = None
-    charts: tuple[Chart, ...] = ()
+    charts: tuple[Chart, ...] = field(default=(), kw_only=True)
 
     @property
     def table(self) -> Table:

@@ -7,79 +7,31 @@ the frontier is a straight line, whose slope is the weight at which they are equ
 
 from __future__ import annotations
 
-import functools
 import itertools
 import math
-from collections.abc import Callable, Iterator
-from dataclasses import dataclass, replace
+from collections.abc import Callable
+from dataclasses import replace
 from typing import TYPE_CHECKING, TypeVar
 
-import numpy as np
-
 from olefinlp.answers.answer import Answer, Chart
-from olefinlp.answers.quantities import NOISE, Quantities
+from olefinlp.answers.frontier_solves import EQUAL, Goal, Seeker, Vertex, between, goal_of, reach
+from olefinlp.answers.quantities import Quantities
 from olefinlp.answers.tables import Column, Record, Table
 from olefinlp.answers.words import amount, percent, worth
 from olefinlp.answers.words import money as money_words
-from olefinlp.inputs.case import PLAN_UNITS, Case
-from olefinlp.inputs.findings import near_name
-from olefinlp.inputs.prices import Price
-from olefinlp.inputs.ratios import load_unit_text, unit_rate
-from olefinlp.lp.certificate import Bounds
-from olefinlp.lp.compile import Floats, Integers, Label
-from olefinlp.lp.neighbours import FREE, NeighbourError, Optimum
-from olefinlp.lp.steps import SAME, Point, Step, trace
+from olefinlp.lp.neighbours import NeighbourError
+from olefinlp.lp.steps import SAME
 
 if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
 
-TIMES_TODAY = 10
-"""How far a curve goes without an end given: so many times today's price, where there is one."""
 BEYOND = 0.25
 """How far past its last step a curve without an end given is shown, as a share of the way to it."""
-EQUAL = 1e-6
-"""Share of the largest flow within which two plans have the same of a quantity."""
 MOSTLY = 2 / 3
 """From this share on a fall is said to be of one kind."""
 NAMED, LEAST_SHARE = 2, 0.1
 """Changes named of purchases and of sales: how many at most, and the part of the largest that each has at least."""
-VERBS = {"imports": "imported", "exports": "exported", "emissions": "emitted"}
 Found = TypeVar("Found")
-
-
-@dataclass(frozen=True)
-class Goal:
-    """A quantity that is traded against margin: the sum of some columns of the plan, all months together.
-
-    In units of the plan it is shown times `scale` in `unit`, thousands of `own`. A weight as people write it (in
-    `weight_unit`) times `factor` is thousands of the currency per unit of the plan. `rates` are what the columns
-    cost (`sign` 1) or bring (−1) at today's prices, empty where they have none; `price` is today's price, as weights
-    are written, where it is one number.
-    """
-
-    path: str
-    verb: str
-    columns: Integers
-    own: str
-    unit: str
-    scale: float
-    factor: float
-    weight_unit: str
-    sign: int
-    rates: Floats
-    price: float | None
-
-    def of(self, x: Floats) -> float:
-        """The quantity, in units of the plan."""
-        return float(x[self.columns].sum())
-
-    def money(self, x: Floats) -> float:
-        """What it costs or brings at today's prices, thousands of the currency."""
-        return float(self.rates @ x[self.columns]) if len(self.rates) else 0.0
-
-    def in_all(self, weight: float) -> float | None:
-        """The price with a weight on top (a sale: taken off), as weights are written."""
-        return None if self.price is None else self.price + self.sign * weight
 
 
 # ---------------------------------------------------------------------------------- the questions
@@ -95,13 +47,13 @@ def two_goal_curve(plan: Plan, goal: str, low: float | None = None, high: float 
     `high` the curve goes on until the quantity falls no more, but not past ten times today's price, or the margin
     per unit where it has none.
 
-    2n + 1 solves for n plans, two more for each plan and one for the least of the goal. Raises `ValueError` for an
+    2n + 1 solves for n plans, two or three more for each plan and one for the least of the goal. Raises `ValueError` for an
     unknown goal (with the nearest name), an empty range, or a weight at which the margin has no end.
 
     >>> from olefinlp import make_plan, read_scenario
-    >>> curve = two_goal_curve(make_plan(read_scenario("scenarios/thermal_cracker.yaml")), "cuts.propylene", 0, 1000)
-    >>> [round(row["quantity"] * 1000, 2) for row in curve.table.rows][-1]
-    0.0
+    >>> curve = two_goal_curve(make_plan(read_scenario("scenarios/thermal_cracker.yaml")), "feeds.ethane")
+    >>> [round(1000 * row["quantity"], 2) for row in curve.table.rows]
+    [27.22, 9.87, 0.0]
     """
     return _asked(plan, goal, lambda seeker: _curve(seeker, low, high))
 
@@ -113,193 +65,19 @@ def at_most(plan: Plan, goal: str, quantity: float) -> Answer:
     Raises `ValueError` for an unknown goal, and for a quantity below the least that any plan has.
 
     >>> from olefinlp import make_plan, read_scenario
-    >>> answer = at_most(make_plan(read_scenario("scenarios/thermal_cracker.yaml")), "cuts.propylene", 1e-4)
-    >>> answer.table.rows[0]["quantity"]
-    0.0001
+    >>> answer = at_most(make_plan(read_scenario("scenarios/thermal_cracker.yaml")), "feeds.ethane", 0.02)
+    >>> round(answer.table.rows[0]["last"], 2)
+    1.84
     """
     return _asked(plan, goal, lambda seeker: _point(seeker, quantity))
 
 
 def _asked(plan: Plan, goal: str, ask: Callable[[Seeker], Found]) -> Found:
-    against = _goal(plan.quantities.case, plan.lp.column_at, goal)
+    against = goal_of(plan.quantities.case, plan.lp.column_at, goal)
     try:
         return plan.neighbours.together(lambda: ask(Seeker(plan, against)))
     except NeighbourError as error:
         raise ValueError(f"at some of these weights on {goal} the margin has no end: ask for less") from error
-
-
-# ---------------------------------------------------------------------------------- the goal
-
-
-def _goal(case: Case, column_at: dict[Label, int], path: str) -> Goal:
-    known = dict(_paths(case))
-    if path not in known:
-        hint = near_name(path, known) or "it is a utility traded, a purchase, an outlet, a cut or a recovery unit: utilities.<trade> …"
-        raise ValueError(f"`{path}` is no quantity of this plan that can be a second goal; {hint}")
-    kind, names = known[path]
-    labels = [(month, label, item) for month in case.months for label, item in _labels(case, kind, names)]
-    prices = [case.prices[item, month] for month, _, item in labels if item]
-    columns = np.array([column_at[*label, month] for month, label, _ in labels], dtype=np.int32)
-    verb, own, one, sign = _words(case, kind, names[0], prices)
-    factor, weight_unit = 1 / one, f"{case.currency}/{own}"
-    if prices and not prices[0].of:
-        factor, weight_unit = prices[0].factor, prices[0].unit
-    return Goal(
-        path=path,
-        verb=verb,
-        columns=columns,
-        own=own,
-        unit=PLAN_UNITS.get(own, f"thousand {own}"),
-        scale=1 / one,
-        factor=factor,
-        weight_unit=weight_unit,
-        sign=sign,
-        rates=np.array([price.value for price in prices]),
-        price=prices[0].value / factor if len({price.value for price in prices}) == 1 else None,
-    )
-
-
-def _paths(case: Case) -> Iterator[tuple[str, tuple[str, tuple[str, ...]]]]:
-    """Path in the files → what kind of quantity it is, and the names that it sums over."""
-    yield from ((f"utilities.{trade}", ("trade", (trade,))) for trade in case.trades)
-    bought: dict[str, tuple[str, ...]] = {}
-    for source, data in case.sources.items():
-        whole = f"{data.kind}.{data.feed}"
-        bought[whole] = (*bought.get(whole, ()), source)
-        bought[f"{data.kind}.{source}"] = (source,)
-    yield from ((path, ("bought", sources)) for path, sources in bought.items())
-    yield from ((f"outlets.{outlet}", ("sold", (outlet,))) for outlet in case.outlets)
-    yield from ((f"cuts.{cut}", ("cut_made", (cut,))) for cut in case.cuts)
-    yield from ((f"recovery_units.{unit}", ("unit_load", (unit,))) for unit in case.units)
-
-
-def _labels(case: Case, kind: str, names: tuple[str, ...]) -> Iterator[tuple[Label, str]]:
-    """Columns without their month, and the price of each; no price where it is none of the quantity itself."""
-    for name in names:
-        if kind == "bought":
-            yield from (((kind, name, str(k)), case.purchase_item(name, k)) for k in case.sources[name].tiers)
-        elif name in case.sale_tiers and kind == "sold":
-            priced = name not in case.deductions  # a deduction is taken off what the contents bring
-            yield from (((kind, name, str(k)), case.sale_item(name, k) if priced else "") for k in case.sale_tiers[name])
-        elif kind == "sold":
-            yield from ((("disposition", name, cut), "") for cut in case.outlets[name])
-        else:
-            yield (kind, name), f"utilities.{name}" if kind == "trade" else ""
-
-
-def _words(case: Case, kind: str, name: str, prices: list[Price]) -> tuple[str, str, float, int]:
-    """What is done with it, its unit and how many base units that is, and whether it costs (1) or brings (−1) money."""
-    if kind == "unit_load":
-        unit = case.scenario.plant.units[name]
-        return "load", load_unit_text(unit.rate_unit), unit_rate(unit), 1
-    own = prices[0].unit_used.partition("/")[2] if prices else "t"
-    if kind == "trade":
-        trade = case.trades[name][1]
-        return VERBS[trade], own, 1.0, -1 if trade == "exports" else 1
-    if kind == "sold":
-        own = "GJ LHV" if case.outlets[name][0] in case.heat_cuts else "t"
-        return "sold" if name in case.sale_tiers else "taken", own, 1.0, -1
-    return {"bought": "bought", "cut_made": "made"}[kind], own, 1.0, 1
-
-
-# ---------------------------------------------------------------------------------- the solves
-
-
-@dataclass(frozen=True)
-class Vertex:
-    """A plan that is the best of all at weights from `low` to `high` (as the plan counts them)."""
-
-    low: float
-    high: float
-    x: Floats
-    sure: bool
-    """Whether of plans that are equal in both goals it is surely the one with most main product."""
-
-
-class Seeker:
-    """Solves a plan's program with a weight on a goal."""
-
-    def __init__(self, plan: Plan, goal: Goal) -> None:
-        self.plan, self.goal = plan, goal
-        self.case, self.lp = plan.quantities.case, plan.lp
-        self.size = plan.quantities.size
-        self.money = sum(abs(line.amount) for line in plan.lines)
-        self.main = plan.scenario.plant.file.main_product
-        self.main_columns = [plan.lp.column_at["cut_made", self.main, month] for month in self.case.months]
-        self.optimum = functools.cache(self._optimum)
-
-    def _optimum(self, weight: float) -> Optimum:
-        cost = self.lp.cost.copy()
-        np.subtract.at(cost, self.goal.columns, weight)
-        found = self.plan.neighbours.solve(cost=cost)
-        if found is None:  # prices forbid no plan, and the plan is one
-            raise ArithmeticError("a plan is lost when a price moves")
-        return found
-
-    def point(self, weight: float) -> Point:
-        """Best of margin − weight × goal, and its slope."""
-        found = self.optimum(weight)
-        return Point(weight, found.objective, -self.goal.of(found.x))
-
-    def vertex(self, step: Step) -> Vertex:
-        """The plan of a step, from inside it, where margin and goal are unique; of equal plans the one with most main product.
-
-        What has a dual stays at its limit in all plans that are equal: one more solve chooses among them.
-        """
-        found = self.optimum((step.low + step.high) / 2)
-        lp, small = found.lp, FREE * float(np.abs(found.cost).max(initial=0.0))
-        rows = _held(found.row_dual, lp.row_low, lp.row_high, small)
-        columns = _held(found.cost - lp.gathered(found.row_dual), lp.low, lp.high, small)
-        most = self._extreme(self.main_columns, 1.0, rows, columns)
-        same = most is not None and (
-            abs(float(found.cost @ (most - found.x))) <= SAME * self.money
-            and abs(self.goal.of(most) - self.goal.of(found.x)) <= EQUAL * self.size
-        )
-        return Vertex(step.low, step.high, most if most is not None and same else found.x, same)
-
-    @functools.cached_property
-    def least(self) -> float:
-        """The least of the goal that any plan has, in units of the plan."""
-        found = self._extreme(self.goal.columns, -1.0, {}, {})
-        return self.quantity(self.plan.solution.x if found is None else found)
-
-    def _extreme(self, columns: list[int] | Integers, sign: float, rows: Bounds, bounds: Bounds) -> Floats | None:
-        """The plan with most (least) in some columns while rows and columns are held."""
-        cost = np.zeros(len(self.lp.columns))
-        cost[columns] = sign * float(np.abs(self.lp.cost).max(initial=1.0))  # duals as large as those of money, so as exact
-        found = self.plan.neighbours.solve(cost=cost, rows=rows, columns=bounds)
-        return None if found is None else found.x
-
-    def quantity(self, x: Floats) -> float:
-        """The goal in units of the plan; what is rounding reads as nothing."""
-        return self._some(self.goal.of(x))
-
-    def _some(self, value: float) -> float:
-        return value if abs(value) > NOISE * self.size else 0.0
-
-    def record(self, x: Floats) -> Record:
-        """What a plan comes to: goal, margin, main product."""
-        goal, quantity, main = self.goal, self.quantity(x), self._some(float(x[self.main_columns].sum()))
-        margin = float(self.lp.cost @ x) + self.lp.offset
-        return {
-            "quantity": quantity * goal.scale,
-            "margin": margin,
-            "margin_before": margin + goal.sign * goal.money(x),
-            "main": main,
-            "per_main": quantity * goal.scale / main if main > 0 else None,
-            "margin_per_tonne": margin / main if main > 0 else None,
-        }
-
-    def quantities(self, x: Floats) -> Quantities:
-        """A plan's values by the plant's own names."""
-        return Quantities(self.case, self.lp, replace(self.plan.solution, x=x))
-
-
-def _held(dual: Floats, low: Floats, high: Floats, small: float) -> Bounds:
-    """What stays at a limit in every optimum."""
-    limit = np.where(dual > 0, high, low)
-    places = np.flatnonzero((np.abs(dual) > small) & np.isfinite(limit)).tolist()
-    return {place: (float(limit[place]), float(limit[place])) for place in places}
 
 
 # ---------------------------------------------------------------------------------- the curve
@@ -308,10 +86,10 @@ def _held(dual: Floats, low: Floats, high: Floats, small: float) -> Bounds:
 def _curve(seeker: Seeker, low: float | None, high: float | None) -> Answer:
     goal = seeker.goal
     start = 0.0 if low is None else low * goal.factor
-    stop = max(start, 0.0) + _reach(seeker) if high is None else high * goal.factor
+    stop = max(start, 0.0) + reach(seeker) if high is None else high * goal.factor
     if not (start < stop and math.isfinite(stop - start)):
         raise ValueError(f"the range {start / goal.factor:g} to {stop / goal.factor:g} {goal.weight_unit} is empty or has no end")
-    vertices = [seeker.vertex(step) for step in trace(seeker.point, start, stop, seeker.money)]
+    vertices = seeker.vertices(start, stop)
     last = vertices[-1]
     if high is None and len(vertices) > 1 and seeker.quantity(last.x) <= seeker.least + EQUAL * seeker.size:
         vertices[-1] = replace(last, high=min(last.high, last.low + BEYOND * (last.low - start)))
@@ -322,17 +100,7 @@ def _curve(seeker: Seeker, low: float | None, high: float | None) -> Answer:
     table = Table("frontier", f"Margin against {goal.path}", _columns(seeker), rows, note)
     charts = _charts(seeker, rows)
     sentences = _sentences(seeker, rows, vertices)
-    return Answer("frontier", f"Margin against {goal.path}", (table,), sentences, note, charts[0], charts[1:])
-
-
-def _reach(seeker: Seeker) -> float:
-    """How far a curve goes without an end given, as the plan counts weights."""
-    priced = TIMES_TODAY * float(np.abs(seeker.goal.rates).max(initial=0.0))
-    if priced:
-        return priced
-    x, margin = seeker.plan.solution.x, abs(seeker.plan.solution.objective)
-    per = seeker.quantity(x) or float(x[seeker.main_columns].sum())
-    return margin / per if margin and per else float(np.abs(seeker.lp.cost).max(initial=1.0))
+    return Answer("frontier", f"Margin against {goal.path}", (table,), sentences, note, charts[0], charts=charts[1:])
 
 
 def _row(seeker: Seeker, vertex: Vertex, before: Vertex | None) -> Record:
@@ -359,7 +127,8 @@ def _throughput_part(before: Record, after: Record) -> float | None:
     if before["per_main"] is None or after["per_main"] is None:
         return None
     mean = (before["per_main"] + after["per_main"]) / 2
-    return float((before["main"] - after["main"]) * mean / (before["quantity"] - after["quantity"]))
+    share = float((before["main"] - after["main"]) * mean / (before["quantity"] - after["quantity"]))
+    return share if abs(share) > EQUAL else 0.0
 
 
 def _columns(seeker: Seeker) -> tuple[Column, ...]:
@@ -410,7 +179,9 @@ def _charts(seeker: Seeker, rows: list[Record]) -> tuple[Chart, ...]:
 
 def _note(seeker: Seeker, sure: bool) -> str:
     goal, main = seeker.goal, seeker.main.replace("_", " ")
-    text = "A row is the best plan at every weight from and to which it reaches; margins are at today's prices, without the weight. "
+    text = (
+        "A row is the best plan at every weight from and to which it reaches; margins are at today's prices, without the weight. "
+    )
     if len(goal.rates) and goal.price is None:
         text += "Its prices differ from one another today: the weight comes on top of each. "
     elif goal.sign < 0 and goal.price is not None:
@@ -426,15 +197,16 @@ def _note(seeker: Seeker, sure: bool) -> str:
 
 def _sentences(seeker: Seeker, rows: list[Record], vertices: list[Vertex]) -> tuple[str, ...]:
     goal, first, last = seeker.goal, rows[0], rows[-1]
-    least = f"No plan has less than {_much(seeker, seeker.least * goal.scale)}."
+    least = [f"No plan has less than {_much(seeker, seeker.least * goal.scale)}."] if seeker.least > 0 else []
     if len(rows) == 1:
         way = f"from {_weight(goal, first['low'])} to {_weight(goal, first['high'])}"
         text = f"{goal.path}: {_much(seeker, first['quantity'])} {goal.verb} {way}, nothing between changes it."
         if first["quantity"]:
-            return text, least
-        return f"{text} A premium, a weight below zero, shows what would bring it in.", least
+            return (text, *least)
+        return f"{text} A premium, a weight below zero, shows what would bring it in.", *least
     fall = f"{goal.path}: falls from {_much(seeker, first['quantity'])} {goal.verb} at {_weight(goal, first['low'])} "
-    fall += f"to {_much(seeker, last['quantity'])} at {_weight(goal, last['low'])}, in {len(rows) - 1} steps"
+    fall += f"to {_much(seeker, last['quantity'])} at {_weight(goal, last['low'])}, "
+    fall += "in 1 step" if len(rows) == 2 else f"in {len(rows) - 1} steps"
     if first["per_main"] is not None and last["per_main"] is not None:
         fall += f"; {amount(first['per_main'])} → {amount(last['per_main'])} {goal.own} per t of {seeker.main.replace('_', ' ')}"
     at = max(range(1, len(rows)), key=lambda k: rows[k - 1]["quantity"] - rows[k]["quantity"])
@@ -443,7 +215,7 @@ def _sentences(seeker: Seeker, rows: list[Record], vertices: list[Vertex]) -> tu
     whole = _changes(seeker.quantities(vertices[0].x), seeker.quantities(vertices[-1].x))
     sentences = [f"{fall}.", f"{step}; {rows[at]['changed']}." if rows[at]["changed"] else f"{step}."]
     sentences += [f"From first to last: {whole}."] if whole and len(rows) > 2 else []
-    return (*sentences, *_throughput(seeker, rows), _price_of_it(seeker, first, last), least)
+    return (*sentences, *_throughput(seeker, rows), _price_of_it(seeker, first, last), *least)
 
 
 def _throughput(seeker: Seeker, rows: list[Record]) -> list[str]:
@@ -460,7 +232,7 @@ def _throughput(seeker: Seeker, rows: list[Record]) -> list[str]:
     elif share <= 1 - MOSTLY:
         kind = "The fall is less per tonne rather than throughput"
     text = f"{kind}: {main} made goes from {amount(first['main'])} to {amount(last['main'])} kt"
-    if first["per_main"]:
+    if first["per_main"] and last["per_main"]:
         per = last["per_main"] / first["per_main"] - 1
         what = "the load" if goal.verb == "load" else f"what is {goal.verb}"
         text += f", {what} per t of it {'falls' if per <= 0 else 'rises'} by {percent(abs(per))}"
@@ -495,7 +267,11 @@ def _weight(goal: Goal, weight: float) -> str:
     total = goal.in_all(weight)
     if total is not None:
         return f"{worth(_plain(total))} {goal.weight_unit} in all"
-    return f"{worth(_plain(weight))} {goal.weight_unit} on top" if len(goal.rates) else f"a weight of {worth(weight)} {goal.weight_unit}"
+    return (
+        f"{worth(_plain(weight))} {goal.weight_unit} on top"
+        if len(goal.rates)
+        else f"a weight of {worth(weight)} {goal.weight_unit}"
+    )
 
 
 def _plain(value: float) -> float:
@@ -520,11 +296,15 @@ def _changes(before: Quantities, after: Quantities) -> str:
 
 
 def _bought(q: Quantities, heat: bool) -> dict[str, float]:
-    """Feed → bought in all months, kt."""
-    found: dict[str, float] = {}
-    for source, data in q.case.sources.items() if not heat else ():
-        found[data.feed] = found.get(data.feed, 0.0) + sum(q.bought(source, month) for month in q.case.months)
-    return found
+    """Feed, with its source where it has several → bought in all months, kt."""
+    if heat:
+        return {}
+    feeds = [data.feed for data in q.case.sources.values()]
+    names = {
+        source: data.feed if feeds.count(data.feed) == 1 else f"{data.feed} {data.name}"
+        for source, data in q.case.sources.items()
+    }
+    return {names[source]: sum(q.bought(source, month) for month in q.case.months) for source in names}
 
 
 def _sold(q: Quantities, heat: bool) -> dict[str, float]:
@@ -544,7 +324,7 @@ def _point(seeker: Seeker, quantity: float) -> Answer:
         least = f"the least that any plan has is {_much(seeker, seeker.least * goal.scale)}"
         raise ValueError(f"at most {quantity:g} {goal.unit} {goal.verb}: no plan is possible; {least}")
     own = seeker.quantity(plan.solution.x)
-    weight, x = (0.0, plan.solution.x) if wanted >= own else _between(seeker, max(wanted, seeker.least))
+    weight, x = (0.0, plan.solution.x) if wanted >= own else between(seeker, max(wanted, seeker.least))
     row = seeker.record(x)
     lost = plan.solution.objective - row["margin"]
     lost = lost if lost > SAME * seeker.money else 0.0
@@ -572,31 +352,10 @@ def _point(seeker: Seeker, quantity: float) -> Answer:
     return Answer("frontier_point", f"Best margin with a limit on {goal.path}", (table,), _point_sentences(seeker, row), note)
 
 
-def _between(seeker: Seeker, wanted: float) -> tuple[float, Floats]:
-    """The weight at which a quantity is bought out, and the mix of the two plans beside it that has just so much.
-
-    The tangents of a plan with more and of one with no more meet at a weight; a solve there is on both or is one
-    of the two from then on.
-    """
-    noise = EQUAL * seeker.size
-    more, less = seeker.point(0.0), seeker.point(_reach(seeker))
-    if -more.slope <= wanted:  # of plans that earn the same today one has no more than this
-        return 0.0, seeker.optimum(0.0).x
-    while -less.slope > wanted + noise:
-        less = seeker.point(2 * less.at)
-    while True:
-        at = (less.value - more.value + more.slope * more.at - less.slope * less.at) / (more.slope - less.slope)
-        middle = seeker.point(min(max(at, more.at), less.at))
-        on_line = abs(middle.value - more.value - more.slope * (middle.at - more.at)) <= SAME * seeker.money
-        if on_line or not more.at < at < less.at:
-            share = min(max((wanted + less.slope) / (less.slope - more.slope), 0.0), 1.0)
-            return middle.at, share * seeker.optimum(more.at).x + (1 - share) * seeker.optimum(less.at).x
-        more, less = (middle, less) if -middle.slope > wanted + noise else (more, middle)
-
-
 def _point_sentences(seeker: Seeker, row: Record) -> tuple[str, ...]:
     goal, currency = seeker.goal, seeker.plan.currency
-    text = f"{goal.path}: with at most {_much(seeker, row['limit'])} {goal.verb} the best margin is {money_words(row['margin'], currency)}"
+    text = f"{goal.path}: with at most {_much(seeker, row['limit'])} {goal.verb} the best margin is "
+    text += money_words(row["margin"], currency)
     if not row["given_up"]:
         return (f"{text}: nothing is given up.",)
     last = f"the last {goal.own} saved costs {worth(row['last'])} {goal.weight_unit}"
