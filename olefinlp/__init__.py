@@ -27,6 +27,7 @@ if TYPE_CHECKING:
     from olefinlp.answers.comparison import compare_cases as compare_cases
     from olefinlp.answers.curves import step_curve as step_curve
     from olefinlp.answers.default import default_answers as default_answers
+    from olefinlp.answers.frontier import two_goal_curve as two_goal_curve
     from olefinlp.answers.impossible import explain_impossible as explain_impossible
     from olefinlp.answers.margin_owners import who_earns_the_margin as who_earns_the_margin
     from olefinlp.answers.plan import NoPlan as NoPlan
@@ -36,6 +37,8 @@ if TYPE_CHECKING:
     from olefinlp.answers.ratio_curve import ratio_curve as ratio_curve
     from olefinlp.answers.regret import regret_table as regret_table
     from olefinlp.answers.room import room_to_move as room_to_move
+    from olefinlp.answers.sweep import Sweep as Sweep
+    from olefinlp.answers.sweep import sweep as sweep
     from olefinlp.answers.tables import Table as Table
     from olefinlp.answers.why_not import why_not_feed as why_not_feed
     from olefinlp.answers.why_not import why_not_mode as why_not_mode
@@ -48,7 +51,12 @@ if TYPE_CHECKING:
     from olefinlp.inputs.plant import read_plant as read_plant
     from olefinlp.inputs.scenario import Scenario as Scenario
     from olefinlp.inputs.scenario import read_scenario as read_scenario
+    from olefinlp.inputs.sweep_draws import draw_cases as draw_cases
+    from olefinlp.inputs.sweep_file import read_sweep_file as read_sweep_file
+    from olefinlp.inputs.sweep_values import percent as percent
     from olefinlp.lp.certificate import CertificateError as CertificateError
+    from olefinlp.outputs import read_sweep as read_sweep
+    from olefinlp.outputs import sweep_into as sweep_into
     from olefinlp.outputs import write_answer as write_answer
     from olefinlp.outputs import write_bridge as write_bridge
     from olefinlp.outputs import write_case_sheet as write_case_sheet
@@ -74,6 +82,7 @@ _HOMES = {
     "Plan": "olefinlp.answers.plan",
     "Plant": "olefinlp.inputs.plant",
     "Scenario": "olefinlp.inputs.scenario",
+    "Sweep": "olefinlp.answers.sweep",
     "Table": "olefinlp.answers.tables",
     "break_even_prices": "olefinlp.answers.break_even",
     "bridge": "olefinlp.answers.bridge",
@@ -82,16 +91,23 @@ _HOMES = {
     "cash_cost": "olefinlp.answers.cash_cost",
     "compare_cases": "olefinlp.answers.comparison",
     "default_answers": "olefinlp.answers.default",
+    "draw_cases": "olefinlp.inputs.sweep_draws",
     "explain_impossible": "olefinlp.answers.impossible",
     "make_plan": "olefinlp.answers.plan",
+    "percent": "olefinlp.inputs.sweep_values",
     "price_ranges": "olefinlp.answers.price_ranges",
     "ratio_curve": "olefinlp.answers.ratio_curve",
     "read_cases": "olefinlp.inputs.case_files",
     "read_plant": "olefinlp.inputs.plant",
     "read_scenario": "olefinlp.inputs.scenario",
+    "read_sweep": "olefinlp.outputs",
+    "read_sweep_file": "olefinlp.inputs.sweep_file",
     "regret_table": "olefinlp.answers.regret",
     "room_to_move": "olefinlp.answers.room",
     "step_curve": "olefinlp.answers.curves",
+    "sweep": "olefinlp.answers.sweep",
+    "sweep_into": "olefinlp.outputs",
+    "two_goal_curve": "olefinlp.answers.frontier",
     "who_earns_the_margin": "olefinlp.answers.margin_owners",
     "why_not_feed": "olefinlp.answers.why_not",
     "why_not_mode": "olefinlp.answers.why_not",
@@ -119,6 +135,7 @@ __all__ = [
     "Plan",
     "Plant",
     "Scenario",
+    "Sweep",
     "Table",
     "__version__",
     "break_even_prices",
@@ -128,16 +145,23 @@ __all__ = [
     "cash_cost",
     "compare_cases",
     "default_answers",
+    "draw_cases",
     "explain_impossible",
     "make_plan",
+    "percent",
     "price_ranges",
     "ratio_curve",
     "read_cases",
     "read_plant",
     "read_scenario",
+    "read_sweep",
+    "read_sweep_file",
     "regret_table",
     "room_to_move",
     "step_curve",
+    "sweep",
+    "sweep_into",
+    "two_goal_curve",
     "who_earns_the_margin",
     "why_not_feed",
     "why_not_mode",

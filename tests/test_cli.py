@@ -786,7 +786,7 @@ def test_schema_of_something_else(tmp_path: Path) -> None:
     """Known ones are named."""
     done = run("schema", "furnace")
     assert done.code == 2
-    assert done.err == "`furnace` has no schema; known: scenario, plant\n"
+    assert done.err == "`furnace` has no schema; known: scenario, plant, cases, sweep\n"
     assert run("schema", "plant", "-o", tmp_path).code == 1
 
 

@@ -128,7 +128,7 @@ class Entry:
             return self._quantity(value, below, head)
         number = plain_number(value)
         if number is None:
-            self.error(below, f"{head}`{'' if value is None else value}` is not a number")
+            self.error(below, head + ("a value is empty" if value is None else f"`{value}` is not a number"))
         return number
 
     def _quantity(self, text: str, below: Path_, head: str) -> float | None:
@@ -147,26 +147,32 @@ class Entry:
             return None
         return quantity.number
 
+    def only(self, written: Mapping[object, object], known: Sequence[str], below: Path_ = ()) -> bool:
+        """Whether all names are known ones; a finding for each that is not."""
+        unknown = [str(name) for name in written if name not in known]
+        for name in unknown:
+            near = near_name(name, known)
+            hint = near if near.startswith("did") else ""
+            self.error((*below, name), f"unknown name `{name}`; here it takes: {', '.join(known)}", hint)
+        return not unknown
+
     def values(self, written: object) -> list[float] | None:
         """All values, whichever way they are written; None with findings."""
-        below: Path_ = ()
-        if isinstance(written, Mapping):
-            unknown = [name for name in written if name not in _FORMS]
-            for name in unknown:
-                self.error(
-                    (str(name),), f"unknown name `{name}`; here it takes: {', '.join(_FORMS)}", near_name(str(name), _FORMS)
-                )
-            forms = [form for form in ("values", "percent") if form in written]
-            if len(forms) + any(name in written for name in _STEPS) != 1:
-                if not unknown:
-                    self.error((), "needs one of: `values`, `percent`, or `from` and `to`")
-                return None
-            if not forms:
-                return self._steps(written, ())
-            below, written = (forms[0],), written[forms[0]]
-            if isinstance(written, Mapping):
-                return self._steps(written, below)
-        return self._list(written.changes if isinstance(written, Percent) else written, below)
+        if isinstance(written, Percent):
+            return self._list(written.changes, ())
+        if not isinstance(written, Mapping):
+            return self._list(written, ())
+        if not self.only(written, _FORMS):
+            return None
+        forms = [form for form in ("values", "percent") if form in written]
+        stepped = {name: value for name, value in written.items() if name in _STEPS}
+        if len(forms) + bool(stepped) != 1:
+            self.error((), "needs one of: `values`, `percent`, or `from` and `to`")
+            return None
+        if stepped:
+            return self._steps(stepped, ())
+        inside = written[forms[0]]
+        return self._steps(inside, (forms[0],)) if isinstance(inside, Mapping) else self._list(inside, (forms[0],))
 
     def _list(self, written: object, below: Path_) -> list[float] | None:
         if isinstance(written, np.ndarray) and written.ndim > 1:
@@ -186,16 +192,15 @@ class Entry:
 
     def _steps(self, written: Mapping[object, object], below: Path_) -> list[float] | None:
         """Equal steps from one end to the other, each worked out from the ends, so that no rounding adds up."""
-        kept = {str(name): value for name, value in written.items() if below or name != "month"}
-        missing = [name for name in ("from", "to") if name not in kept]
-        for name in [name for name in kept if name not in _STEPS] if below else []:
-            self.error((*below, name), f"unknown name `{name}`; here it takes: {', '.join(_STEPS)}", near_name(str(name), _STEPS))
+        if not self.only(written, _STEPS, below):
+            return None
+        missing = [name for name in ("from", "to") if name not in written]
         for name in missing:
             self.error(below, f"`{name}` is missing")
-        if ("step" in kept) == ("count" in kept):
+        if ("step" in written) == ("count" in written):
             self.error(below, "needs `step` or `count`, one of them")
             return None
-        read = {name: self._end_or_step(kept[name], (*below, name), name) for name in _STEPS if name in kept}
+        read = {name: self._end_or_step(written[name], (*below, name), name) for name in _STEPS if name in written}
         if missing or any(value is None for value in read.values()):
             return None
         exact = {name: Fraction(Decimal(repr(value))) for name, value in read.items()}
@@ -256,4 +261,5 @@ def _text(number: Fraction) -> str:
 
 
 def too_many(count: int) -> str:
+    """What to say of more cases than are planned in one sweep."""
     return f"makes {count:,} cases; at most {MOST_CASES:,} are planned in one sweep"

@@ -4,16 +4,21 @@ from __future__ import annotations
 
 import os
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    import pandas as pd
+
     from olefinlp.answers.answer import Answer
     from olefinlp.answers.case_answers import CaseAnswers
     from olefinlp.answers.comparison import Comparison
     from olefinlp.answers.plan import Plan
+    from olefinlp.answers.sweep import Sweep
     from olefinlp.inputs.scenario import Scenario
 
 __all__ = [
+    "read_sweep",
+    "sweep_into",
     "write_answer",
     "write_bridge",
     "write_case_sheet",
@@ -23,6 +28,24 @@ __all__ = [
     "write_lp",
     "write_workbook",
 ]
+
+
+def sweep_into(folder: str | os.PathLike[str], scenario: Scenario | Plan, vary: object, **options: Any) -> Sweep:
+    """As `sweep`, with the results written into a folder while they come; one that was stopped goes on.
+
+    Options are those of `sweep`, and `form` of the part files, "csv" or "parquet". Raises what `sweep` raises, and
+    `OutputError` when the folder holds another sweep or cannot be written to.
+    """
+    from olefinlp.outputs.sweep_parts import sweep_into as run
+
+    return run(folder, scenario, vary, **options)
+
+
+def read_sweep(folder: str | os.PathLike[str]) -> pd.DataFrame:
+    """The rows of a sweep's folder, finished or not, in the order of the cases. Raises `OutputError` when there are none."""
+    from olefinlp.outputs.sweep_parts import read_sweep as read
+
+    return read(folder)
 
 
 def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:
