@@ -136,7 +136,7 @@ def test_a_price_is_lognormal_around_today_with_the_sd_of_the_values(march: Scen
         ({"distribution": "triangular", "low": 480, "high": 600}, stats.triang(54 / 120, 480, 120)),
         ({"distribution": "triangular", "low": 534, "high": 600}, stats.triang(0, 534, 66)),
     ],
-    ids=str,
+    ids=["normal", "normal with its unit", "uniform", "uniform from today", "triangular", "mode today", "mode at an end"],
 )
 def test_each_distribution_is_what_it_says(march: Scenario, spread: dict[str, object], exact: Any) -> None:
     values = column(draw_cases(march, {NAPHTHA: spread}, COUNT, 5), NAPHTHA)
