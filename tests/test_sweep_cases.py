@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Callable
 from dataclasses import replace
@@ -72,7 +73,7 @@ def wrong(call: Callable[..., object], *arguments: Any, **named: Any) -> str:
         ({"from": "500 USD/t", "to": 510, "count": 3}, [500, 505, 510]),
         ({"values": {"from": 1, "to": 2, "count": 2}}, [1, 2]),
     ],
-    ids=str,
+    ids=itertools.count(),
 )
 def test_ways_to_write_values(march: Scenario, written: object, values: list[float]) -> None:
     cases = cases_of(march, {NAPHTHA: written})
