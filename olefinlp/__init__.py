@@ -39,6 +39,10 @@ if TYPE_CHECKING:
     from olefinlp.answers.room import room_to_move as room_to_move
     from olefinlp.answers.sweep import Sweep as Sweep
     from olefinlp.answers.sweep import sweep as sweep
+    from olefinlp.answers.sweep_answers import distribution as distribution
+    from olefinlp.answers.sweep_answers import heat_map as heat_map
+    from olefinlp.answers.sweep_answers import steps_of_sweep as steps_of_sweep
+    from olefinlp.answers.sweep_answers import tornado as tornado
     from olefinlp.answers.tables import Table as Table
     from olefinlp.answers.why_not import why_not_feed as why_not_feed
     from olefinlp.answers.why_not import why_not_mode as why_not_mode
@@ -64,6 +68,7 @@ if TYPE_CHECKING:
     from olefinlp.outputs import write_csv as write_csv
     from olefinlp.outputs import write_json as write_json
     from olefinlp.outputs import write_lp as write_lp
+    from olefinlp.outputs import write_sweep as write_sweep
     from olefinlp.outputs import write_workbook as write_workbook
     from olefinlp.outputs.files import OutputError as OutputError
 
@@ -91,8 +96,10 @@ _HOMES = {
     "cash_cost": "olefinlp.answers.cash_cost",
     "compare_cases": "olefinlp.answers.comparison",
     "default_answers": "olefinlp.answers.default",
+    "distribution": "olefinlp.answers.sweep_answers",
     "draw_cases": "olefinlp.inputs.sweep_draws",
     "explain_impossible": "olefinlp.answers.impossible",
+    "heat_map": "olefinlp.answers.sweep_answers",
     "make_plan": "olefinlp.answers.plan",
     "percent": "olefinlp.inputs.sweep_values",
     "price_ranges": "olefinlp.answers.price_ranges",
@@ -105,8 +112,10 @@ _HOMES = {
     "regret_table": "olefinlp.answers.regret",
     "room_to_move": "olefinlp.answers.room",
     "step_curve": "olefinlp.answers.curves",
+    "steps_of_sweep": "olefinlp.answers.sweep_answers",
     "sweep": "olefinlp.answers.sweep",
     "sweep_into": "olefinlp.outputs",
+    "tornado": "olefinlp.answers.sweep_answers",
     "two_goal_curve": "olefinlp.answers.frontier",
     "who_earns_the_margin": "olefinlp.answers.margin_owners",
     "why_not_feed": "olefinlp.answers.why_not",
@@ -119,6 +128,7 @@ _HOMES = {
     "write_csv": "olefinlp.outputs",
     "write_json": "olefinlp.outputs",
     "write_lp": "olefinlp.outputs",
+    "write_sweep": "olefinlp.outputs",
     "write_workbook": "olefinlp.outputs",
 }
 
@@ -145,8 +155,10 @@ __all__ = [
     "cash_cost",
     "compare_cases",
     "default_answers",
+    "distribution",
     "draw_cases",
     "explain_impossible",
+    "heat_map",
     "make_plan",
     "percent",
     "price_ranges",
@@ -159,8 +171,10 @@ __all__ = [
     "regret_table",
     "room_to_move",
     "step_curve",
+    "steps_of_sweep",
     "sweep",
     "sweep_into",
+    "tornado",
     "two_goal_curve",
     "who_earns_the_margin",
     "why_not_feed",
@@ -173,6 +187,7 @@ __all__ = [
     "write_csv",
     "write_json",
     "write_lp",
+    "write_sweep",
     "write_workbook",
 ]
 

@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from olefinlp import cli_cases
+from olefinlp import cli_cases, cli_frontier, cli_sweep
 from olefinlp.cli_support import (
     EXIT_FAILED,
     EXIT_INPUT,
@@ -219,6 +219,8 @@ def curve(
 
 app.command()(cli_cases.cases)
 app.command()(cli_cases.bridge)
+app.command()(cli_sweep.sweep)
+app.command()(cli_frontier.frontier)
 
 
 @app.command()
@@ -264,7 +266,7 @@ def new(folder: Annotated[Path, typer.Argument(help="Folder to put the starter p
 
 @app.command()
 def schema(
-    what: Annotated[str, typer.Argument(help="`scenario` or `plant`.")] = "scenario",
+    what: Annotated[str, typer.Argument(help="`scenario`, `plant`, `cases` or `sweep`.")] = "scenario",
     output: Annotated[Path | None, typer.Option("--output", "-o", help="File to write; standard output if left out.")] = None,
 ) -> None:
     """Print the JSON Schema of a file, with which an editor completes and checks it."""
@@ -274,7 +276,7 @@ def schema(
     try:
         text = schema_json(what)
     except KeyError:
-        stop(f"`{what}` has no schema; known: scenario, plant", EXIT_INPUT)
+        stop(f"`{what}` has no schema; known: scenario, plant, cases, sweep", EXIT_INPUT)
     if output is None:
         data(text)
         return

@@ -51,3 +51,9 @@ class Answer:
 
     def __str__(self) -> str:
         return "\n".join([self.title, *(f"  {sentence}" for sentence in self.sentences)])
+
+    def _repr_html_(self) -> str:
+        """An answer in a notebook: its sentences and its main table."""
+        from olefinlp.answers.notebook import answer_html
+
+        return answer_html(self)

@@ -205,6 +205,12 @@ class Plan:
         files = [Path(name) for name in self.scenario.files]
         return {shown(file): hashlib.sha256(file.read_bytes()).hexdigest() for file in files if file.exists()}
 
+    def _repr_html_(self) -> str:
+        """A plan in a notebook: its margin, what it buys and sells."""
+        from olefinlp.answers.notebook import plan_html
+
+        return plan_html(self)
+
 
 def make_plan(scenario: Scenario) -> Plan:
     """The best plan of a scenario, proven.

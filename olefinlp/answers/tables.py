@@ -56,3 +56,9 @@ class Table:
     def where(self, **match: Any) -> list[Record]:
         """Rows whose values equal those given."""
         return [row for row in self.rows if all(row[key] == value for key, value in match.items())]
+
+    def _repr_html_(self) -> str:
+        """A table in a notebook: its first rows."""
+        from olefinlp.answers.notebook import table_html
+
+        return table_html(self)

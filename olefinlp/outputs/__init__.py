@@ -26,6 +26,7 @@ __all__ = [
     "write_csv",
     "write_json",
     "write_lp",
+    "write_sweep",
     "write_workbook",
 ]
 
@@ -41,11 +42,18 @@ def sweep_into(folder: str | os.PathLike[str], scenario: Scenario | Plan, vary: 
     return run(folder, scenario, vary, **options)
 
 
+def write_sweep(found: Sweep, path: str | os.PathLike[str]) -> Path:
+    """Write a sweep as a workbook with the charts that suit it, whole or not at all. Raises `OutputError`."""
+    from olefinlp.outputs.sweep_workbook import write_sweep as write
+
+    return write(found, path)
+
+
 def read_sweep(folder: str | os.PathLike[str]) -> pd.DataFrame:
     """The rows of a sweep's folder, finished or not, in the order of the cases. Raises `OutputError` when there are none."""
     from olefinlp.outputs.sweep_parts import read_sweep as read
 
-    return read(folder)
+    return read(Path(folder))
 
 
 def write_workbook(plan: Plan, path: str | os.PathLike[str], answers: tuple[Answer, ...] = ()) -> Path:
