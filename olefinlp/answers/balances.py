@@ -7,6 +7,7 @@ difference is the check.
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Iterator
 from dataclasses import dataclass
 
@@ -65,10 +66,20 @@ class Recomputed:
         self.q = q
         self.plant: Plant = q.case.scenario.plant
         self.modes: dict[str, Mode] = {mode.name: mode for mode in self.plant.modes if mode.name in q.case.modes}
+        self.modes_of: dict[str, list[str]] = {}
+        for name, mode in self.modes.items():
+            self.modes_of.setdefault(mode.group, []).append(name)
         self.loss = share(self.plant.file.loss.share)
         self._components: dict[str, dict[str, float]] = {}
+        self._cuts: dict[str, dict[str, float]] = {}
 
-    def yields(self, mode: Mode, parcel: str) -> dict[str, float]:
+    @functools.cached_property
+    def yields(self) -> dict[tuple[str, str], dict[str, float]]:
+        """(mode, parcel) → yields, t/t."""
+        pairs = dict.fromkeys((name, parcel) for name, parcel, _ in self.q.case.charges)
+        return {(name, parcel): self._yields(self.modes[name], parcel) for name, parcel in pairs}
+
+    def _yields(self, mode: Mode, parcel: str) -> dict[str, float]:
         """Base yields plus slope times (property − reference), t/t."""
         table = self.plant.file.furnace_groups[mode.group].yields
         shares = dict(self.plant.yields[table, mode.feed, mode.severity].shares)
@@ -86,7 +97,7 @@ class Recomputed:
             for name, parcel, _ in self.q.case.charges_in[month]:
                 charged = self.q.value("charge", name, parcel, month)
                 if charged:
-                    for component, value in self.yields(self.modes[name], parcel).items():
+                    for component, value in self.yields[name, parcel].items():
                         made[component] += charged * (1 - self.loss) * value
             for source, data in self.q.case.sources.items():
                 if data.kind == "side_streams":
@@ -97,8 +108,10 @@ class Recomputed:
 
     def cuts(self, month: str) -> dict[str, float]:
         """Cuts, kt."""
-        made = self.components(month)
-        return {cut: sum(made[c] * row[cut] for c, row in self.plant.recovery.items()) for cut in self.plant.file.cuts}
+        if month not in self._cuts:
+            made, recovery = self.components(month), self.plant.recovery
+            self._cuts[month] = {cut: sum(made[c] * row[cut] for c, row in recovery.items()) for cut in self.plant.file.cuts}
+        return self._cuts[month]
 
     def heat(self, cut: str, month: str) -> float:
         """Heat of the components of a cut, TJ LHV."""
@@ -148,16 +161,33 @@ class Recomputed:
 
     def unit_load(self, unit: str, month: str) -> float:
         """Load of a recovery unit, thousands of its unit times hours."""
-        data = self.plant.units[unit]
-        load = 0.0
-        for row in self.plant.unit_loads:
-            if row.unit == unit:
-                per = outlet_measure(self.plant, row.item) if row.of == "outlet" else MASS
-                load += load_per_tonne(data, row.load, per) * self.amount(row.of, row.item, month)
-        for name, mode in self.modes.items():
-            if unit in mode.loads:
-                load += load_per_tonne(data, mode.loads[unit]) * self.q.charged(name, month)
-        return load
+        rows, modes = self._loads[unit]
+        load = sum(value * self.amount(of, item, month) for of, item, value in rows)
+        return load + sum(value * self.q.charged(name, month) for name, value in modes)
+
+    @functools.cached_property
+    def _loads(self) -> dict[str, tuple[list[tuple[str, str, float]], list[tuple[str, float]]]]:
+        """Recovery unit → (kind, item, load per unit of it) of its table, and (mode, load per t)."""
+        plant, found = self.plant, {}
+        for unit, data in plant.units.items():
+            rows = []
+            for row in plant.unit_loads:
+                if row.unit == unit:
+                    per = outlet_measure(plant, row.item) if row.of == "outlet" else MASS
+                    rows.append((row.of, row.item, load_per_tonne(data, row.load, per)))
+            modes = [(name, load_per_tonne(data, mode.loads[unit])) for name, mode in self.modes.items() if unit in mode.loads]
+            found[unit] = (rows, modes)
+        return found
+
+    @functools.cached_property
+    def elements(self) -> list[str]:
+        """The elements that can be balanced."""
+        return [element for element in ("hydrogen", "carbon") if element_reason(self.plant, self, element) == ""]
+
+    @functools.cached_property
+    def contents(self) -> dict[str, dict[tuple[str, str], float]]:
+        """Element → (mode, parcel) → what of it a tonne charged carries, t/t."""
+        return {element: {pair: _content(self, element, *pair) for pair in self.yields} for element in self.elements}
 
 
 def balance_flows(again: Recomputed) -> list[Flow]:
@@ -167,9 +197,8 @@ def balance_flows(again: Recomputed) -> list[Flow]:
         flows += [*_mass(again, month), *_feeds(again, month), *_cuts(again, month)]
         for utility in again.plant.file.utilities:
             flows += _utility(again, utility, month)
-        for element in ("hydrogen", "carbon"):
-            if element_reason(again.plant, again, element) == "":
-                flows += _element(again, element, month)
+        for element in again.elements:
+            flows += _element(again, element, month)
     return [flow for flow in flows if abs(flow.amount) > NOISE * again.q.size]
 
 
@@ -198,7 +227,7 @@ def _unclosed(again: Recomputed, month: str) -> float:
     q, plant = again.q, again.plant
     gained = 0.0
     for name, parcel, _ in q.case.charges_in[month]:
-        excess = sum(again.yields(again.modes[name], parcel).values()) - 1
+        excess = sum(again.yields[name, parcel].values()) - 1
         gained += q.value("charge", name, parcel, month) * (1 - again.loss) * excess
     for source, data in q.case.sources.items():
         if data.kind == "side_streams":
@@ -274,9 +303,8 @@ def _utility(again: Recomputed, utility: str, month: str) -> Iterator[Flow]:
 def _utility_of_modes(again: Recomputed, utility: str, month: str, unit: str) -> Iterator[Flow]:
     for group, data in again.plant.file.furnace_groups.items():
         fired = used = 0.0
-        for name, mode in again.modes.items():
-            if mode.group != group:
-                continue
+        for name in again.modes_of.get(group, ()):
+            mode = again.modes[name]
             charged = again.q.charged(name, month)
             if data.fired_with == utility and mode.fired_heat:
                 fired += charged * mode.fired_heat
@@ -306,25 +334,27 @@ def feed_element(plant: Plant, feed: str, element: str) -> float:
     return share(data.carbon) if data.carbon else 1 - hydrogen
 
 
-def _carried(again: Recomputed, feed: str, element: str, month: str) -> float:
-    """Hydrogen or carbon in what is charged of a feed, kt; a delivery of another quality carries what its slopes move."""
-    total = 0.0
+def _content(again: Recomputed, element: str, name: str, parcel: str) -> float:
+    """Hydrogen or carbon of a tonne charged, t/t; a delivery of another quality carries what its slopes move."""
+    mode, plant = again.modes[name], again.plant
+    content = feed_element(plant, mode.feed, element)
+    base = plant.yields[plant.file.furnace_groups[mode.group].yields, mode.feed, mode.severity].shares
+    for component, value in again.yields[name, parcel].items():
+        content += (value - base[component]) * getattr(plant.components[component], f"{element}_share")
+    return content
+
+
+def _carried(again: Recomputed, element: str, month: str) -> dict[str, float]:
+    """Hydrogen or carbon in what is charged of each feed, kt."""
+    carried, contents = dict.fromkeys(again.q.case.parcels, 0.0), again.contents[element]
     for name, parcel, _ in again.q.case.charges_in[month]:
-        mode = again.modes[name]
-        if mode.feed != feed:
-            continue
-        content = feed_element(again.plant, feed, element)
-        base = again.plant.yields[again.plant.file.furnace_groups[mode.group].yields, feed, mode.severity].shares
-        for component, value in again.yields(mode, parcel).items():
-            content += (value - base[component]) * getattr(again.plant.components[component], f"{element}_share")
-        total += again.q.value("charge", name, parcel, month) * content
-    return total
+        carried[again.modes[name].feed] += again.q.value("charge", name, parcel, month) * contents[name, parcel]
+    return carried
 
 
 def _element(again: Recomputed, element: str, month: str) -> Iterator[Flow]:
     """What the charges carry against what the components and the loss carry."""
-    for feed in again.q.case.parcels:
-        carried = _carried(again, feed, element, month)
+    for feed, carried in _carried(again, element, month).items():
         yield Flow(month, f"{element} in cracking", f"{feed} charged", 1, carried, "kt")
         yield Flow(month, f"{element} in cracking", f"loss of {feed}", -1, carried * again.loss, "kt")
     for name, made in again.components(month).items():

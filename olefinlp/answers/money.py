@@ -49,8 +49,7 @@ class MoneyLine:
 
 def money_lines(q: Quantities) -> list[MoneyLine]:
     """All lines of all months, in the order of the groups."""
-    lines = [line for month in q.case.months for line in _month_lines(q, month)]
-    return sorted(lines, key=lambda line: (q.case.months.index(line.month), GROUPS.index(line.group)))
+    return [line for month in q.case.months for line in sorted(_month_lines(q, month), key=lambda line: GROUPS.index(line.group))]
 
 
 def _month_lines(q: Quantities, month: str) -> Iterator[MoneyLine]:

@@ -136,7 +136,8 @@ def furnaces_table(q: Quantities) -> Table:
                 "decokes": charged * case.decokes_per_kt[mode],
             }
         )
-    rows.sort(key=lambda row: case.months.index(row["month"]))
+    turn = {month: at for at, month in enumerate(case.months)}
+    rows.sort(key=lambda row: turn[row["month"]])
     note = "Furnaces kept busy count decoking and may be fractions: a month is planned, not a calendar."
     return Table("furnaces", "Furnaces", columns, rows, note)
 
@@ -160,8 +161,8 @@ def groups_table(q: Quantities) -> Table:
             limit = case.limits.get(("furnace_hours", group, month))
             used = sum(
                 case.hours_per_kt[mode] * q.value("charge", mode, parcel, month)
-                for mode, parcel, _ in case.charges_in[month]
-                if case.mode_group[mode] == group
+                for mode in case.modes_in.get((group, month), ())
+                for parcel in case.charged_parcels[mode, month]
             )
             available = limit.high if limit else None
             rows.append(

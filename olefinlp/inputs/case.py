@@ -227,6 +227,26 @@ class Case:
         return found
 
     @functools.cached_property
+    def modes_in(self) -> dict[tuple[str, str], tuple[str, ...]]:
+        """(furnace group, month) → modes that can charge something."""
+        found: dict[tuple[str, str], list[str]] = {}
+        for mode, month in self.charged_parcels:
+            found.setdefault((self.mode_group[mode], month), []).append(mode)
+        return {key: tuple(modes) for key, modes in found.items()}
+
+    @functools.cached_property
+    def cuts_given(self) -> dict[tuple[str, ...], frozenset[str]]:
+        """(mode, parcel), or (side stream,) → the cuts that a tonne of it gives."""
+        made: list[tuple[tuple[str, ...], dict[str, float]]] = [*self.yields.items()]
+        made += [((stream,), shares) for stream, shares in self.compositions.items()]
+        rows = {cut: {c for c, share in row.items() if share > 0} for cut, row in self.recovery.items()}
+        found: dict[tuple[str, ...], frozenset[str]] = {}
+        for key, shares in made:
+            there = {c for c, share in shares.items() if share > 0}
+            found[key] = frozenset(cut for cut, components in rows.items() if components & there)
+        return found
+
+    @functools.cached_property
     def _hours(self) -> dict[str, float]:
         return {p.name: p.hours for p in self.periods}
 
@@ -273,6 +293,8 @@ class Reader:
         self.plant = scenario.plant
         self.findings = findings
         self.case = Case(scenario, scenario.periods)
+        self._months = {period.name for period in scenario.periods}
+        self._by_month: dict[tuple[str, Path_], dict[str, Any]] = {}
 
     def known(self, name: str, names: Iterable[str], path: Path_, what: str, document: Document | None = None) -> bool:
         """Whether a name is known; a finding with the nearest one if not."""
@@ -285,19 +307,28 @@ class Reader:
 
     def of_month(self, written: Monthly[Any], period: Period, path: Path_, document: Document | None = None) -> Any:
         """What is written for a month; a finding when nothing is."""
-        value = written.at(period.name)
-        place = (document or self.scenario.document).place(path)
-        months = {p.name for p in self.scenario.periods}
-        for month, _ in written.by_month:
-            if month not in months and not _is_month(month):
-                self.findings.error(
-                    place, path_text(path), f"`{month}` is not a month", near_name(month, [*months, "other_months"])
-                )
-            elif month not in months:
-                self.findings.warn(place, path_text(path), f"has no effect: {month} is not in this scenario")
+        document = document or self.scenario.document
+        if not written.by_month:
+            value = written.always
+        else:
+            if (document.file, path) not in self._by_month:
+                self._check_months(written, path, document)
+                self._by_month[document.file, path] = dict(written.by_month)
+            value = self._by_month[document.file, path].get(period.name, written.always)
         if value is None:
-            self.findings.error(place, path_text(path), f"has no value for {period.name}", "add it, or `other_months:`")
+            place, message = document.place(path), f"has no value for {period.name}"
+            self.findings.error(place, path_text(path), message, "add it, or `other_months:`")
         return value
+
+    def _check_months(self, written: Monthly[Any], path: Path_, document: Document) -> None:
+        """What is written for another time has no effect; what is no month at all is a slip."""
+        place = document.place(path)
+        for month, _ in written.by_month:
+            if month not in self._months and not _is_month(month):
+                hint = near_name(month, [*self.case.months, "other_months"])
+                self.findings.error(place, path_text(path), f"`{month}` is not a month", hint)
+            elif month not in self._months:
+                self.findings.warn(place, path_text(path), f"has no effect: {month} is not in this scenario")
 
     def amount(
         self,

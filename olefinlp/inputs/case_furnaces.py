@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import itertools
+
 from olefinlp.inputs.case import Reader
 from olefinlp.inputs.findings import path_text
 from olefinlp.inputs.measures import Measure
 from olefinlp.inputs.plant import Mode
+from olefinlp.inputs.scenario_file import Outage
 from olefinlp.inputs.units import UnitError, convert, dims, share
 
 HOURS = Measure("h", dims(time=1))
@@ -22,12 +25,13 @@ def read_furnaces(reader: Reader) -> None:
         _read_mode(reader, mode)
         for parcel in case.parcels[mode.feed]:
             case.yields[mode.name, parcel] = _yields(reader, mode, parcel)
+    there = {(feed, parcel): _months_there(reader, feed, parcel) for feed, parcels in case.parcels.items() for parcel in parcels}
     case.charges = tuple(
         (mode.name, parcel, month)
         for mode in modes
         for month in case.months
         for parcel in case.parcels[mode.feed]
-        if _can_occur(reader, mode.feed, parcel, month)
+        if month in there[mode.feed, parcel]
     )
     for group in plant.file.furnace_groups:
         _read_hours(reader, group)
@@ -79,17 +83,16 @@ def _yields(reader: Reader, mode: Mode, parcel: str) -> dict[str, float]:
     return shares
 
 
-def _can_occur(reader: Reader, feed: str, parcel: str, month: str) -> bool:
-    """Whether a parcel can be there in a month: bought in it, or before it into a tank, or a recycle."""
+def _months_there(reader: Reader, feed: str, parcel: str) -> frozenset[str]:
+    """Months in which a parcel can be there: bought in it, or before it into a tank, or a recycle."""
     case = reader.case
-    if feed in reader.plant.recycle_feeds():
-        return True
     stocked = feed in reader.scenario.file.stocks
-    if stocked and parcel in case.opening:
-        return True
-    until = case.months.index(month)
-    reach = case.months[: until + 1] if stocked else (month,)
-    return any(case.parcel_of.get((s.label, m)) == parcel for s in case.sources.values() for m in reach)
+    if feed in reader.plant.recycle_feeds() or (stocked and parcel in case.opening):
+        return frozenset(case.months)
+    bought = {month for (_, month), own in case.parcel_of.items() if own == parcel}
+    if not stocked:
+        return frozenset(bought)
+    return frozenset(itertools.dropwhile(lambda month: month not in bought, case.months))
 
 
 def _read_hours(reader: Reader, group: str) -> None:
@@ -101,11 +104,13 @@ def _read_hours(reader: Reader, group: str) -> None:
     loss = share(written.unplanned_loss)
     reader.note(f"furnace_groups.{group}.furnaces", "", str(written.furnaces), float(written.furnaces), "furnaces", place)
     reader.note(f"furnace_groups.{group}.unplanned_loss", "", written.unplanned_loss.text, loss, "fraction", place)
+    outages: dict[str, list[tuple[int, Outage]]] = {}
+    for index, outage in enumerate(scenario.file.outages):
+        if outage.group == group:
+            outages.setdefault(outage.month, []).append((index, outage))
     for period in scenario.periods:
         lost, reasons = 0.0, []
-        for index, outage in enumerate(scenario.file.outages):
-            if outage.group != group or outage.month != period.name:
-                continue
+        for index, outage in outages.get(period.name, ()):
             path = ("outages", index, "hours")
             place = scenario.document.place(path)
             try:

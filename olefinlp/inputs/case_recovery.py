@@ -17,6 +17,7 @@ from olefinlp.inputs.ratios import (
     unit_measure,
     unit_rate,
 )
+from olefinlp.inputs.scenario_file import UnitFactor
 from olefinlp.inputs.units import share
 from olefinlp.inputs.yaml_files import Document, Path_
 
@@ -96,20 +97,23 @@ def read_units(reader: Reader) -> None:
         reader.note(f"unit_loads.{load.unit}.{load.of}.{load.item}", "", load.load.text, value, "per t", load.place)
         parts[load.unit] += item_parts(reader, load.of, load.item, value)
     for mode in plant.modes:
-        for unit, quantity in mode.loads.items() if mode.name in case.modes else ():
+        for unit, quantity in mode.loads.items() if mode.name in case.mode_feed else ():
             value = load_per_tonne(plant.units[unit], quantity)
             reader.note(f"modes.{mode.name}.load.{unit}", "", quantity.text, value, "per t", mode.place)
             parts[unit].append(Part("charge", (mode.name,), value))
     case.unit_parts = {unit: tuple(terms) for unit, terms in parts.items()}
+    written: dict[tuple[str, str], list[tuple[int, UnitFactor]]] = {}
+    for index, one in enumerate(reader.scenario.file.unit_factors):
+        written.setdefault((one.unit, one.month), []).append((index, one))
     for data in plant.units.values():
         for period in reader.scenario.periods:
-            _read_capacity(reader, data, period)
+            _read_capacity(reader, data, period, written.get((data.name, period.name), []))
 
 
-def _read_capacity(reader: Reader, unit: RecoveryUnit, period: Period) -> None:
+def _read_capacity(reader: Reader, unit: RecoveryUnit, period: Period, written: list[tuple[int, UnitFactor]]) -> None:
     if unit.capacity is None:
         return
-    factor, reason, place = _factor(reader, unit.name, period)
+    factor, reason, place = _factor(reader, unit.name, period, written)
     rate = unit_rate(unit, unit.capacity)
     reader.note(
         f"recovery_units.{unit.name}.capacity", period.name, unit.capacity.text, rate * factor, "per h", unit.place, reason
@@ -131,22 +135,15 @@ def _read_capacity(reader: Reader, unit: RecoveryUnit, period: Period) -> None:
     )
 
 
-def _factor(reader: Reader, unit: str, period: Period) -> tuple[float, str, Place]:
+def _factor(reader: Reader, unit: str, period: Period, written: list[tuple[int, UnitFactor]]) -> tuple[float, str, Place]:
     """This month's factor on a capacity, why, and who wrote the limit that results."""
     factor, reasons, place = 1.0, [], reader.plant.units[unit].place
-    for index, written in enumerate(reader.scenario.file.unit_factors):
-        if written.unit == unit and written.month == period.name:
-            factor *= written.factor
-            place = reader.scenario.document.place(("unit_factors", index))
-            reasons.append(written.reason)
-            reader.note(
-                path_text(("unit_factors", index, "factor")),
-                period.name,
-                f"{written.factor:g}",
-                written.factor,
-                "× capacity",
-                place,
-            )
+    for index, one in written:
+        factor *= one.factor
+        place = reader.scenario.document.place(("unit_factors", index))
+        reasons.append(one.reason)
+        path = path_text(("unit_factors", index, "factor"))
+        reader.note(path, period.name, f"{one.factor:g}", one.factor, "× capacity", place)
     return factor, "; ".join(reasons), place
 
 

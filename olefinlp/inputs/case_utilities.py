@@ -69,7 +69,7 @@ def read_utilities(reader: Reader) -> None:
     for use in plant.utility_uses:
         _read_use(reader, use, parts)
     for mode in plant.modes:
-        if mode.name not in case.modes:
+        if mode.name not in case.mode_feed:
             continue
         fired_with = plant.file.furnace_groups[mode.group].fired_with
         if fired_with and mode.fired_heat:

@@ -6,15 +6,15 @@ What clashes only through the whole plant is for the plan itself to find.
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass
 
 from olefinlp.inputs.case import Case, Limit
 from olefinlp.inputs.findings import Findings, Place
 from olefinlp.inputs.scenario_prices import check_prices, high_of
 from olefinlp.inputs.scenario_references import check_references
-from olefinlp.inputs.scenario_unbounded import check_unbounded, cuts_made, recycle_modes
+from olefinlp.inputs.scenario_unbounded import check_unbounded, recycle_modes
 
 __all__ = ["check_case", "check_references"]
 TINY = 1e-9
@@ -79,30 +79,27 @@ def check_takes_have_modes(case: Case, findings: Findings) -> None:
 # ---------------------------------------------------------------------------------- takes and furnace hours
 
 
-@dataclass(frozen=True)
-class _Span:
-    """Months in a row, by their first and last."""
-
-    months: tuple[str, ...]
-
-    @property
-    def words(self) -> str:
-        first, last = self.months[0], self.months[-1]
-        return first if first == last else f"{first} to {last}"
-
-
 def check_takes_fit(case: Case, findings: Findings) -> None:
     """What must be bought, and what the tanks cannot keep, fits into the hours of the furnaces that can crack it.
 
     Each feed counts with its least hours per kt, so what is refused here can never be a plan.
     """
     able = _able_groups(case)
+    charged = {feed: _must_charge(case, feed) for feed in able}
+    least = {feed: _least_hours(case, feed) for feed in able}
+    hours = {group: _hours_there(case, group) for group in frozenset().union(*able.values())}
+    spans = _spans(case)
     reported: list[frozenset[str]] = []
     for groups in _group_sets(able):
         if any(groups >= smaller for smaller in reported):
             continue
-        for span in _spans(case):
-            if _check_span(case, findings, span, groups, able):
+        feeds = [feed for feed, own in able.items() if own <= groups]
+        there = [sum(ones) for ones in zip(*(hours[group] for group in groups), strict=True)]
+        for at, span in enumerate(spans):
+            amounts = {feed: charged[feed][at] for feed in feeds if charged[feed][at] > TINY}
+            needed = sum(amount * least[feed] for feed, amount in amounts.items())
+            if needed > there[at] * (1 + TINY) + TINY:
+                _report_span(case, findings, span, groups, amounts, (needed, there[at]))
                 reported.append(groups)
                 break
 
@@ -127,47 +124,65 @@ def _group_sets(able: dict[str, frozenset[str]]) -> list[frozenset[str]]:
     return sorted(sets, key=lambda groups: (len(groups), sorted(groups)))
 
 
-def _spans(case: Case) -> list[_Span]:
+def _spans(case: Case) -> list[tuple[str, ...]]:
     """Each month alone, and all months up to each."""
     months = case.months
-    return [_Span((month,)) for month in months] + [_Span(months[:end]) for end in range(2, len(months) + 1)]
+    return [(month,) for month in months] + [months[:end] for end in range(2, len(months) + 1)]
 
 
-def _check_span(case: Case, findings: Findings, span: _Span, groups: frozenset[str], able: dict[str, frozenset[str]]) -> bool:
-    charged, places = dict[str, float](), list[Place]()
-    for feed, own in able.items():
-        if own <= groups:
-            amount, wrote = _must_charge(case, feed, span)
-            if amount > TINY:
-                charged[feed], places = amount, places + wrote
-    needed = sum(amount * _least_hours(case, feed) for feed, amount in charged.items())
-    there = sum(high_of(case, "furnace_hours", group, month) or 0.0 for group in groups for month in span.months)
-    if needed <= there * (1 + TINY) + TINY:
-        return False
+def _over_spans(values: list[float]) -> list[float]:
+    """Sums of the months of each span, from a value of each month."""
+    return values + list(itertools.accumulate(values))[1:]
+
+
+def _hours_there(case: Case, group: str) -> list[float]:
+    """Hours of a furnace group in each span."""
+    return _over_spans([high_of(case, "furnace_hours", group, month) or 0.0 for month in case.months])
+
+
+def _must_charge(case: Case, feed: str) -> list[float]:
+    """The least that can be charged of a feed in each span (kt)."""
+    takes = dict.fromkeys(case.months, 0.0)
+    for own, limit in _takes(case):
+        if own == feed:
+            takes[limit.month] += limit.low or 0.0
+    amounts = _over_spans(list(takes.values()))
+    if feed not in case.stocks:
+        return amounts
+    tanks = [case.limits["stock", feed, month] for month in case.months]
+    room = [math.inf if tank.high is None else tank.high for tank in tanks]
+    opening = sum(case.opening.get(parcel, 0.0) for parcel in case.stocks[feed].parcels)
+    kept = [opening, *(tank.low or 0.0 for tank in tanks[:-1])] + [opening] * (len(tanks) - 1)
+    return [amount + there - most for amount, there, most in zip(amounts, kept, room + room[1:], strict=True)]
+
+
+def _report_span(
+    case: Case,
+    findings: Findings,
+    span: tuple[str, ...],
+    groups: frozenset[str],
+    charged: dict[str, float],
+    hours: tuple[float, float],
+) -> None:
+    """Hours needed and there, and who wrote what needs them."""
     amounts = ", ".join(f"{amount:.4g} kt of {feed}" for feed, amount in charged.items())
     names = " and ".join(group for group in case.scenario.plant.file.furnace_groups if group in groups)
-    message = (
-        f"{amounts} must be cracked in {span.words}: this needs at least {needed:,.0f} h of {names}, there are {there:,.0f} h"
-    )
-    hours = [case.limits["furnace_hours", group, span.months[0]].place_high for group in sorted(groups)]
-    seen = dict.fromkeys(str(place) for place in [*places[1:], *hours] if place)
+    words = span[0] if len(span) == 1 else f"{span[0]} to {span[-1]}"
+    needed, there = hours
+    message = f"{amounts} must be cracked in {words}: this needs at least {needed:,.0f} h of {names}, there are {there:,.0f} h"
+    places = [place for feed in charged for place in _wrote(case, feed, span)]
+    limits = [case.limits["furnace_hours", group, span[0]].place_high for group in sorted(groups)]
+    seen = dict.fromkeys(str(place) for place in [*places[1:], *limits] if place)
     findings.error(places[0], "feeds", message, "see also " + ", ".join(seen))
-    return True
 
 
-def _must_charge(case: Case, feed: str, span: _Span) -> tuple[float, list[Place]]:
-    """The least that can be charged of a feed in a span (kt), and who wrote it."""
-    takes = [limit for own, limit in _takes(case) if own == feed and limit.month in span.months]
-    amount = sum(limit.low or 0.0 for limit in takes)
-    places = [_low(limit) for limit in takes]
+def _wrote(case: Case, feed: str, span: tuple[str, ...]) -> list[Place]:
+    """Who wrote what must be charged of a feed in a span."""
+    places = [_low(limit) for own, limit in _takes(case) if own == feed and limit.month in span]
     if feed in case.stocks:
-        before = case.before(span.months[0])
-        tank = case.limits["stock", feed, span.months[-1]]
-        opening = sum(case.opening.get(parcel, 0.0) for parcel in case.stocks[feed].parcels)
-        kept = case.limits["stock", feed, before].low or 0.0 if before else opening
-        amount += kept - (tank.high if tank.high is not None else math.inf)
+        tank = case.limits["stock", feed, span[-1]]
         places.append(tank.place_high or _low(tank))
-    return amount, places
+    return places
 
 
 def _least_hours(case: Case, feed: str) -> float:
@@ -205,13 +220,13 @@ def check_end_stocks(case: Case, findings: Findings) -> None:
 # ---------------------------------------------------------------------------------- ways out
 
 
-def _made_from(case: Case, month: str) -> Iterator[dict[str, float]]:
-    """What each charge that can occur, and each side stream on offer, is made of."""
-    for mode, parcel, _ in case.charges_in[month]:
-        yield case.yields[mode, parcel]
+def _cuts_made(case: Case, month: str) -> set[str]:
+    """The cuts that the charges that can occur, and the side streams on offer, give."""
+    ways: list[tuple[str, ...]] = [(mode, parcel) for mode, parcel, _ in case.charges_in[month]]
     for label, source in case.sources.items():
         if source.kind == "side_streams" and high_of(case, "purchase", label, month) != 0:
-            yield case.compositions[source.feed]
+            ways.append((source.feed,))
+    return set().union(*(case.cuts_given[way] for way in ways))
 
 
 def check_end_values(case: Case, findings: Findings) -> None:
@@ -229,15 +244,16 @@ def check_end_values(case: Case, findings: Findings) -> None:
 def check_cuts_leave(case: Case, findings: Findings) -> None:
     """A cut that is made can leave: not all of its outlets are closed."""
     closed: dict[str, list[str]] = {}
+    ways = {cut: [outlet for outlet, cuts in case.outlets.items() if cut in cuts] for cut in case.cuts}
+    kept = {cut for cut in case.cuts if cut in case.stocks or recycle_modes(case, cut)}
     for month in case.months:
-        made = set().union(*(cuts_made(case, shares) for shares in _made_from(case, month)))
+        made = _cuts_made(case, month)
         for cut in case.cuts:
-            outlets = [outlet for outlet, cuts in case.outlets.items() if cut in cuts]
-            shut = bool(outlets) and all(high_of(case, "outlet", outlet, month) == 0 for outlet in outlets)
-            if cut in made and shut and cut not in case.stocks and not recycle_modes(case, cut):
+            shut = bool(ways[cut]) and all(high_of(case, "outlet", outlet, month) == 0 for outlet in ways[cut])
+            if cut in made and shut and cut not in kept:
                 closed.setdefault(cut, []).append(month)
     for cut, months in closed.items():
-        outlets = [outlet for outlet, cuts in case.outlets.items() if cut in cuts]
+        outlets = ways[cut]
         place = case.limits["outlet", outlets[0], months[0]].place_high or Place("")
         message = f"every way out of {cut} is closed in {', '.join(months)} ({', '.join(outlets)}): what makes it cannot run"
         findings.warn(place, f"outlets.{outlets[0]}.max", message)

@@ -43,11 +43,11 @@ def check_plausible(case: Case, findings: Findings) -> None:
     """A price outside its window is mostly one in a wrong unit, or on a wrong basis."""
     windows = case.scenario.plant.file.price_windows
     items = price_items_of(case.scenario)
+    periods = {period.name: period for period in case.periods}
+    keys = {name: window_key(name, windows) for name in items}
     for (name, month), price in case.prices.items():
-        key = window_key(name, windows)
-        if key:
-            period = next(p for p in case.periods if p.name == month)
-            _check_window(case, findings, key, items[name], price, period)
+        if keys[name]:
+            _check_window(case, findings, keys[name], items[name], price, periods[month])
 
 
 def window_key(item: str, windows: Mapping[str, str]) -> str:

@@ -9,11 +9,6 @@ from olefinlp.inputs.findings import Findings
 from olefinlp.inputs.scenario_prices import high_of
 
 
-def cuts_made(case: Case, shares: dict[str, float]) -> set[str]:
-    """The cuts that something made of these components gives."""
-    return {cut for cut, row in case.recovery.items() if any(share > 0 and row.get(c, 0) > 0 for c, share in shares.items())}
-
-
 def recycle_modes(case: Case, cut: str) -> list[str]:
     """The modes that take a cut back into the furnaces."""
     feeds = [feed for feed, own in case.scenario.plant.recycle_feeds().items() if own == cut]
@@ -27,11 +22,13 @@ def check_unbounded(case: Case, findings: Findings) -> None:
     limits is left to the plan.
     """
     for month in case.months:
+        unlimited = [label for label in case.sources if high_of(case, "purchase", label, month) is None]
+        if not unlimited:
+            continue
         open_ways = _OpenWays(case, month)
-        for label, source in case.sources.items():
-            if high_of(case, "purchase", label, month) is not None or open_ways.capped("bought", label):
-                continue
-            found = open_ways.sale_of(label)
+        for label in unlimited:
+            source = case.sources[label]
+            found = "" if open_ways.capped("bought", label) else open_ways.sale_of(label)
             if found:
                 outlet_path = ("outlets", found, "max")
                 place = case.scenario.document.place((source.kind, source.feed, source.name, "max"))
@@ -65,11 +62,10 @@ class _OpenWays:
         case, source = self.case, self.case.sources[label]
         if source.kind == "feeds":
             parcel = case.parcel_of[label, self.month]
-            ways = [case.yields[m, p] for m, p, _ in case.charges_in[self.month] if m in self.modes and p == parcel]
+            ways: list[tuple[str, ...]] = [(m, p) for m, p, _ in case.charges_in[self.month] if m in self.modes and p == parcel]
         else:
-            composition = case.compositions[source.feed]
-            ways = [composition] if self._open(composition) else []
-        cuts = set().union(*(cuts_made(case, shares) for shares in ways))
+            ways = [(source.feed,)] if self._open((source.feed,), case.compositions[source.feed]) else []
+        cuts = set().union(*(case.cuts_given[way] for way in ways))
         sales = (name for name in case.sale_tiers if name in self.outlets and cuts & set(case.outlets[name]))
         return next(sales, "")
 
@@ -120,17 +116,17 @@ class _OpenWays:
         crews = high_of(case, "decoke_crew_hours", self.month) if case.decoke_hours_per_kt[mode] else None
         return hours is None and crews is None and not self.capped("charge", mode)
 
-    def _open(self, shares: dict[str, float]) -> bool:
+    def _open(self, way: tuple[str, ...], shares: dict[str, float]) -> bool:
         """Whether all that a tonne becomes can leave without end."""
         pieces = all(not self.capped("component", c) for c, share in shares.items() if share > 0)
-        return pieces and cuts_made(self.case, shares) <= self.cuts
+        return pieces and self.case.cuts_given[way] <= self.cuts
 
     def _settle(self) -> bool:
         """Drop cuts and modes that no longer lead anywhere without end; True when nothing changed."""
         case = self.case
         cuts = {cut for cut in self.cuts if not self.capped("cut", cut) and self._cut_open(cut)}
-        yields = {mode: case.yields[mode, parcel] for mode, parcel, _ in case.charges_in[self.month]}
-        modes = {mode for mode in self.modes if self._open(yields[mode])}
+        ways = {mode: (mode, parcel) for mode, parcel, _ in case.charges_in[self.month]}
+        modes = {mode for mode in self.modes if self._open(ways[mode], case.yields[ways[mode]])}
         settled = (cuts, modes) == (self.cuts, self.modes)
         self.cuts, self.modes = cuts, modes
         return settled

@@ -18,11 +18,13 @@ from olefinlp.inputs.cases import FACTOR, OUTAGE, Change, WrittenCase, case_scen
 from olefinlp.inputs.fields import PriceWritten
 from olefinlp.inputs.findings import Findings, Place, near_name
 from olefinlp.inputs.plant import Mode, Plant, YieldRow
+from olefinlp.inputs.plant_checks import check_mode_hours, check_mode_numbers, check_plant
 from olefinlp.inputs.plant_file import PlantFile
+from olefinlp.inputs.plant_yields import check_yield_rows
 from olefinlp.inputs.prices import AMOUNT, MONTH, NUMBER, PriceGiven, item_name, typed_of
 from olefinlp.inputs.scenario import Scenario, set_value
 from olefinlp.inputs.scenario_file import ScenarioFile
-from olefinlp.inputs.units import Quantity, UnitError, parse_quantity, parse_unit
+from olefinlp.inputs.units import SHARES, Quantity, UnitError, parse_quantity, parse_unit
 from olefinlp.inputs.validate import validate
 
 PRICE, SCENARIO, PLANT = "price", "scenario", "plant"
@@ -44,8 +46,9 @@ class NoNumber(ValueError):
 class Varied:
     """A number that can be given other values.
 
-    `today` is its value in each month of the scenario in `unit`, the unit in which it is written (empty for a pure
-    number); one value without a month where it is the same for all or belongs to the plant.
+    `today` is its value in each month of the scenario in `unit` (empty for a pure number); one value without a month
+    where it is the same for all or belongs to the plant. The unit is the one in which the number is written; yields are in
+    wt%, hours of modes in h, and an amount that is added to another price in the unit in which prices are used.
     """
 
     path: str
@@ -248,7 +251,7 @@ def _in_plant(plant: Plant, path: str) -> Varied | None:
     head, *rest = path.split(".")
     number: tuple[float, str] | None = None
     if head == "yields" and len(rest) == 4 and (row := plant.yields.get((rest[0], rest[1], rest[2]))) and rest[3] in row.shares:
-        number = (100 * row.shares[rest[3]], "wt%")
+        number = (float(f"{100 * row.shares[rest[3]]:.12g}"), "wt%")  # a share times 100 may end in ...0005
     elif head == "recovery_units" and len(rest) == 2 and rest[1] == "capacity":
         unit = plant.units.get(rest[0])
         number = (unit.capacity.number, unit.capacity.unit.text) if unit and unit.capacity else None
@@ -265,13 +268,14 @@ def plant_at(plant: Plant, values: Mapping[Varied, float]) -> Plant:
     """The plant with other numbers.
 
     What a yield gains, the other yields of its row lose in proportion, so that they still sum to what they did.
-    Raises `InputError` where plant.yaml would not be valid.
+    Raises `InputError` where that is no valid plant: what is read from files is held to the same.
     """
+    before = plant
     shares: dict[tuple[str, str, str], dict[str, float]] = {}
     for varied, value in values.items():
         head, *rest = varied.path.split(".")
         if head == "yields":
-            shares.setdefault((rest[0], rest[1], rest[2]), {})[rest[3]] = value / 100
+            shares.setdefault((rest[0], rest[1], rest[2]), {})[rest[3]] = value * SHARES["wt%"]  # as it is read
         elif head == "recovery_units" and rest[1:] == ["capacity"]:
             unit = plant.units[rest[0]]
             quantity = Quantity(value, parse_unit(varied.unit), f"{shortest(value)} {varied.unit}")
@@ -283,7 +287,24 @@ def plant_at(plant: Plant, values: Mapping[Varied, float]) -> Plant:
     if shares:
         rows = {key: _with_shares(plant.yields[key], new) for key, new in shares.items()}
         plant = replace(plant, yields={**plant.yields, **rows})
+    _check_changed(before, plant, shares)
     return plant
+
+
+def _check_changed(before: Plant, plant: Plant, yields: Iterable[tuple[str, str, str]]) -> None:
+    """What was changed is held to what is asked of files; the rest has been looked at when it was read."""
+    findings = Findings()
+    if plant.file is not before.file:
+        check_plant(plant, findings)
+    else:
+        check_yield_rows(replace(plant, yields={key: plant.yields[key] for key in yields}), findings)
+        modes = tuple(mode for mode, old in zip(plant.modes, before.modes, strict=True) if mode is not old)
+        for check in (check_mode_numbers, check_mode_hours) if modes else ():
+            check(replace(plant, modes=modes), findings)
+    for name, unit in plant.units.items():
+        if unit is not before.units[name] and unit.capacity and unit.capacity.number < 0:
+            findings.error(CALLED, f"recovery_units.{name}", f"the capacity `{unit.capacity}` is negative")
+    findings.stop_on_errors()
 
 
 def _with_shares(row: YieldRow, new: Mapping[str, float]) -> YieldRow:
@@ -291,12 +312,15 @@ def _with_shares(row: YieldRow, new: Mapping[str, float]) -> YieldRow:
     rest = sum(value for name, value in row.shares.items() if name not in new)
     gained = sum(value - row.shares[name] for name, value in new.items())
     scale = (rest - gained) / rest if rest else 1.0
-    return replace(row, shares={name: new.get(name, value * scale) for name, value in row.shares.items()})
+    shares = {name: new.get(name, value * scale) for name, value in row.shares.items()}
+    return replace(row, shares=shares, written={name: f"{100 * value:.12g} wt%" for name, value in shares.items()})
 
 
 def _with_number(mode: Mode, rest: list[str], value: float) -> Mode:
+    if mode.key != tuple(rest[:3]):
+        return mode
     changed: dict[str, Any] = {rest[3]: value}
-    return replace(mode, **changed) if mode.key == tuple(rest[:3]) else mode
+    return replace(mode, **changed)
 
 
 def _with_written(plant: Plant, varied: Varied, value: float) -> Plant:

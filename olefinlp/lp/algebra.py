@@ -17,6 +17,7 @@ from typing import Any
 
 import pyomo.core as pyo  # not pyomo.environ, which loads solver interfaces that are not used here
 from pyomo.common.gc_manager import PauseGC
+from pyomo.core.expr import LinearExpression, MonomialTermExpression
 
 from olefinlp.inputs.case import Case, Part
 
@@ -90,6 +91,12 @@ def declare_variables(m: Any, case: Case) -> None:
     m.trade = pyo.Var(list(case.trades), months, within=pyo.NonNegativeReals)
     m.conversion = pyo.Var(list(case.conversions), months, within=pyo.NonNegativeReals)
     m.nothing = pyo.Var(bounds=(0, 0))
+    m.charges_of = charges_of_modes(m, case)
+
+
+def charges_of_modes(m: Any, case: Case) -> dict[tuple[str, str], list[Any]]:
+    """(mode, month) → its charges over all parcels: sums ask for them again and again."""
+    return {(mode, t): [m.charge[mode, p, t] for p in parcels] for (mode, t), parcels in case.charged_parcels.items()}
 
 
 def _finite(value: float) -> float | None:
@@ -124,7 +131,7 @@ def buy(m: Any, case: Case) -> None:
     ]
 
     def feed_balance(m: Any, parcel: str, t: str) -> Any:
-        charged = sum(m.charge[mode, parcel, t] for mode in modes_of.get((parcel, t), ()))
+        charged = weighted((1.0, m.charge[mode, parcel, t]) for mode in modes_of.get((parcel, t), ()))
         bought = sum(m.bought[s, k, t] for s in sources_of.get((parcel, t), ()) for k in case.sources[s].tiers)
         if parcel not in stocked:
             return row(m, 0, charged - bought, 0)
@@ -152,21 +159,14 @@ def _stock_row(case: Case, line: str, uses: Any, opening: Any) -> Any:
 
 def crack(m: Any, case: Case) -> None:
     """Charges give components; severities share furnace time, so a mix needs no row of its own."""
-    by_month: dict[str, list[tuple[str, str]]] = {t: [] for t in case.months}
-    for mode, parcel, t in case.charges:
-        by_month[t].append((mode, parcel))
     kept = 1 - case.loss
-    coefficients: dict[tuple[str, str], list[tuple[tuple[str, str, str], float]]] = {
-        (c, t): [] for c in case.components for t in case.months
+    gives = {charge: {c: share * kept for c, share in shares.items()} for charge, shares in case.yields.items()}
+    charged = {
+        t: [(gives[mode, parcel], m.charge[mode, parcel, t]) for mode, parcel, _ in case.charges_in[t]] for t in case.months
     }
-    for t in case.months:
-        for mode, parcel in by_month[t]:
-            for c, share in case.yields[mode, parcel].items():
-                if share:
-                    coefficients[c, t].append(((mode, parcel, t), share * kept))
 
     def component_balance(m: Any, c: str, t: str) -> Any:
-        yielded = sum(share * m.charge[index] for index, share in coefficients[c, t])
+        yielded = weighted((shares.get(c, 0.0), charge) for shares, charge in charged[t])
         brought = sum(
             case.compositions[data.feed].get(c, 0.0) * m.bought[s, k, t]
             for s, data in case.sources.items()
@@ -185,7 +185,7 @@ def recover(m: Any, case: Case) -> None:
     """Cuts are recovered shares of components; units carry the load of what passes them."""
 
     def cut_balance(m: Any, k: str, t: str) -> Any:
-        recovered = sum(share * m.component_made[c, t] for c, share in case.recovery[k].items())
+        recovered = weighted((share, m.component_made[c, t]) for c, share in case.recovery[k].items())
         return (0, m.cut_made[k, t] - recovered, 0)
 
     def unit_load_balance(m: Any, u: str, t: str) -> Any:
@@ -207,14 +207,14 @@ def dispose(m: Any, case: Case) -> None:
 
     def cut_disposal(m: Any, k: str, t: str) -> Any:
         to_outlets = sum(m.disposition[o, k, t] for o in outlets_of[k])
-        charged = sum(m.charge[mode, case.mode_feed[mode], t] for mode in recycled[k])
+        charged = weighted((1.0, m.charge[mode, case.mode_feed[mode], t]) for mode in recycled[k])
         if k not in case.stocks or case.stocks[k].is_feed:  # a feed and a cut may share a name
             return row(m, 0, to_outlets + charged - m.cut_made[k, t], 0)
         uses = to_outlets + charged + m.closing_stock[k, t] - m.cut_made[k, t]
         return _stock_row(case, k, uses, _opening(m, case, k, t))
 
     def heat_disposal(m: Any, k: str, t: str) -> Any:
-        heat = sum(share * case.heating_values[c] * m.component_made[c, t] for c, share in case.recovery[k].items())
+        heat = weighted((share * case.heating_values[c], m.component_made[c, t]) for c, share in case.recovery[k].items())
         return (0, sum(m.disposition[o, k, t] for o in outlets_of[k]) - heat, 0)
 
     def outlet_balance(m: Any, o: str, t: str) -> Any:
@@ -239,7 +239,7 @@ def use_utilities(m: Any, case: Case) -> None:
         out_less_in = sum(
             (-1 if kind == "imports" else 1) * m.trade[name, t] for name, (util, kind) in case.trades.items() if util == u
         )
-        there = -case.fixed_use.get((u, t), 0.0)
+        there = 0.0 - case.fixed_use.get((u, t), 0.0)  # never minus zero
         return row(m, there, used_less_made + out_less_in, there)
 
     m.utility_balance = pyo.Constraint(list(case.utilities), case.months, rule=utility_balance)
@@ -293,13 +293,14 @@ def purchased(m: Any, case: Case, source: str, t: str) -> Any:
 
 def hours_used(m: Any, case: Case, group: str, t: str) -> Any:
     """Furnace-hours of a group: on feed and decoking (h)."""
-    modes = [charge for charge in case.charges_in[t] if case.mode_group[charge[0]] == group]
-    return sum(case.hours_per_kt[charge[0]] * m.charge[charge] for charge in modes)
+    modes = case.modes_in.get((group, t), ())
+    return weighted((case.hours_per_kt[mode], charge) for mode in modes for charge in m.charges_of[mode, t])
 
 
 def decoke_hours(m: Any, case: Case, t: str) -> Any:
     """Hours of decoking, all groups (h)."""
-    return sum(case.decoke_hours_per_kt[charge[0]] * m.charge[charge] for charge in case.charges_in[t])
+    charges = case.charges_in[t]
+    return weighted((case.decoke_hours_per_kt[mode], m.charge[mode, parcel, t]) for mode, parcel, _ in charges)
 
 
 def stock(m: Any, case: Case, item: str, t: str) -> Any:
@@ -310,29 +311,38 @@ def stock(m: Any, case: Case, item: str, t: str) -> Any:
 
 def total(m: Any, case: Case, parts: Iterable[Part], t: str) -> Any:
     """A written sum of quantities of the plan in one month."""
-    return sum(part.coefficient * quantity(m, case, part, t) for part in parts if part.coefficient)
+    return weighted((part.coefficient, x) for part in parts for x in counted(m, case, part, t))
 
 
-def quantity(m: Any, case: Case, part: Part, t: str) -> Any:
-    """What one term of a sum counts."""
+def counted(m: Any, case: Case, part: Part, t: str) -> Iterable[Any]:
+    """The variables whose sum one term counts."""
     kind, item = part.kind, part.item
     if kind == "charge":
-        return sum(m.charge[item[0], parcel, t] for parcel in case.charged_parcels.get((item[0], t), ()))
+        return m.charges_of.get((item[0], t), ())  # type: ignore[no-any-return]
     if kind == "component":
-        return m.component_made[item[0], t]
+        return (m.component_made[item[0], t],)
     if kind == "cut":
-        return m.cut_made[item[0], t]
+        return (m.cut_made[item[0], t],)
     if kind == "outlet":
-        return sum(m.disposition[item[0], k, t] for k in case.outlets[item[0]])
+        return [m.disposition[item[0], k, t] for k in case.outlets[item[0]]]
     if kind == "ingredient":
-        return m.disposition[item[0], item[1], t]
+        return (m.disposition[item[0], item[1], t],)
     if kind == "bought":
-        return purchased(m, case, item[0], t)
+        return [m.bought[item[0], k, t] for k in case.sources[item[0]].tiers]
     if kind == "unit_load":
-        return m.unit_load[item[0], t]
+        return (m.unit_load[item[0], t],)
     if kind == "trade":
-        return m.trade[item[0], t]
-    return m.conversion[item[0], t]
+        return (m.trade[item[0], t],)
+    return (m.conversion[item[0], t],)
+
+
+def weighted(terms: Iterable[tuple[float, Any]]) -> Any:
+    """Σ coefficient × variable; 0 when there is nothing in it.
+
+    A sum of products written in one piece: grown term by term it takes four times as long, and this is most of a program.
+    """
+    kept = [MonomialTermExpression(term) for term in terms if term[0]]
+    return LinearExpression(kept) if kept else 0
 
 
 # ---------------------------------------------------------------------------------- objective

@@ -7,16 +7,17 @@ from __future__ import annotations
 
 import functools
 from dataclasses import dataclass, field
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pyomo.core as pyo
 from numpy.typing import NDArray
 from pyomo.common.gc_manager import PauseGC
-from pyomo.core.base.enums import SortComponents
-from pyomo.core.expr.visitor import evaluate_expression
-from pyomo.repn.linear import LinearRepnVisitor
-from pyomo.repn.util import OrderedVarRecorder
+from pyomo.common.numeric_types import native_numeric_types
+from pyomo.core.expr import MonomialTermExpression, NegationExpression, ProductExpression, SumExpression
+
+if TYPE_CHECKING:
+    from olefinlp.inputs.case import Case
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int32]
@@ -127,28 +128,32 @@ class LabelledLp:
 def compile_model(model: pyo.ConcreteModel) -> LabelledLp:
     """Labelled arrays of a linear model.
 
-    Raises `ValueError` if an expression is not linear, which no rule of the algebra is.
+    Raises `ValueError` if an expression is no sum of multiples of variables, which each rule of the algebra is.
     """
     with PauseGC():
         columns, variables = _columns(model)
         at = {id(v): j for j, v in enumerate(variables)}
-        visitor = LinearRepnVisitor({}, var_recorder=OrderedVarRecorder({}, {}, SortComponents.unsorted))
-        rows, starts, index, value, low, high = [], [0], [], [], [], []
+        rows, starts, index, value = list[Label](), [0], list[int](), list[float]()
+        low, high = list[float](), list[float]()
         for container in model.component_objects(pyo.Constraint, active=True):
+            name = container.local_name
             for key, constraint in container.items():
-                repn = _linear(visitor, constraint.body, constraint.name)
-                for number, coefficient in repn.linear.items():
-                    if coefficient:
-                        index.append(at[number])
-                        value.append(coefficient)
+                below, body, above = constraint.to_bounded_expression(evaluate_bounds=True)
+                terms: dict[int, float] = {}
+                constant = _add(body, 1.0, terms, at)
+                if 0.0 in terms.values():
+                    terms = {column: coefficient for column, coefficient in terms.items() if coefficient}
+                index += terms
+                value += terms.values()
                 starts.append(len(index))
-                rows.append(_label(container.local_name, key))
-                low.append(_bound(constraint.lower, -np.inf) - repn.constant)
-                high.append(_bound(constraint.upper, np.inf) - repn.constant)
+                rows.append(_label(name, key))
+                low.append((-np.inf if below is None else below) - constant)
+                high.append((np.inf if above is None else above) - constant)
         cost = np.zeros(len(columns))
-        repn = _linear(visitor, model.margin.expr, "margin")
-        for number, coefficient in repn.linear.items():
-            cost[at[number]] += coefficient
+        terms = {}
+        offset = _add(model.margin.expr, 1.0, terms, at)
+        cost[list(terms)] = list(terms.values())
+        bounds = [v.bounds for v in variables]
         return LabelledLp(
             rows=tuple(rows),
             columns=tuple(columns),
@@ -157,13 +162,33 @@ def compile_model(model: pyo.ConcreteModel) -> LabelledLp:
             value=np.array(value, dtype=float),
             row_low=np.array(low, dtype=float),
             row_high=np.array(high, dtype=float),
-            low=np.array([_bound(v.lower, -np.inf) for v in variables], dtype=float),
-            high=np.array([_bound(v.upper, np.inf) for v in variables], dtype=float),
+            low=np.array([-np.inf if least is None else least for least, _ in bounds], dtype=float),
+            high=np.array([np.inf if most is None else most for _, most in bounds], dtype=float),
             cost=cost,
-            offset=float(repn.constant),
+            offset=float(offset),
             row_at={label: i for i, label in enumerate(rows)},
             column_at={label: j for j, label in enumerate(columns)},
         )
+
+
+def program_of(case: Case) -> LabelledLp:
+    """The arrays of a case: its model built, compiled and let go.
+
+    The model of many periods is millions of small objects that point at each other. Its rules are taken apart here, so
+    that its memory is free before anything is solved, and never looked through for garbage.
+
+    >>> from olefinlp import read_scenario
+    >>> len(program_of(read_scenario("scenarios/thermal_cracker.yaml").case).rows) > 10
+    True
+    """
+    from olefinlp.lp.algebra import build_model
+
+    with PauseGC():
+        model = build_model(case)
+        lp = compile_model(model)
+        for container in model.component_objects((pyo.Constraint, pyo.Objective)):
+            container.clear()
+    return lp
 
 
 PriceMap = dict[tuple[str, str], tuple[Integers, Floats]]
@@ -180,13 +205,10 @@ def compile_prices(model: pyo.ConcreteModel) -> PriceMap:
     with PauseGC():
         _, variables = _columns(model)
         at = {id(v): j for j, v in enumerate(variables)}
-        visitor = LinearRepnVisitor({}, var_recorder=OrderedVarRecorder({}, {}, SortComponents.unsorted))
         sums: dict[tuple[str, str], dict[int, float]] = {}
         for month in model.case.months:
             for item, sign, amount in money_of_month(model, model.case, month):
-                into = sums.setdefault((item, month), {})
-                for number, coefficient in _linear(visitor, sign * amount, item).linear.items():
-                    into[at[number]] = into.get(at[number], 0.0) + coefficient
+                _add(amount, sign, sums.setdefault((item, month), {}), at)
         return {
             key: (np.array(list(into), dtype=np.int32), np.array(list(into.values()), dtype=float)) for key, into in sums.items()
         }
@@ -196,8 +218,9 @@ def _columns(model: pyo.ConcreteModel) -> tuple[list[Label], list[Any]]:
     labels: list[Label] = []
     variables: list[Any] = []
     for container in model.component_objects(pyo.Var, active=True):
+        name = container.local_name
         for key, variable in container.items():
-            labels.append(_label(container.local_name, key))
+            labels.append(_label(name, key))
             variables.append(variable)
     return labels, variables
 
@@ -208,15 +231,31 @@ def _label(name: str, key: Any) -> Label:
     return (name, *map(str, key)) if isinstance(key, tuple) else (name, str(key))
 
 
-def _linear(visitor: Any, expression: Any, name: str) -> Any:
-    repn = visitor.walk_expression(expression)
-    if repn.nonlinear is not None:
-        raise ValueError(f"{name} is not linear")
-    return repn
+def _add(expression: Any, times: float, terms: dict[int, float], at: dict[int, int]) -> float:
+    """Add a multiple of a linear expression to terms by column; gives what it has of a constant."""
+    kind = expression.__class__
+    if kind in native_numeric_types:
+        return times * float(expression)
+    if isinstance(expression, SumExpression):
+        constant = 0.0
+        for term in expression.args:
+            if term.__class__ is MonomialTermExpression:  # nearly all of them, so done here
+                coefficient, variable = term.args
+                column = at[id(variable)]
+                terms[column] = terms.get(column, 0.0) + times * coefficient
+            else:
+                constant += _add(term, times, terms, at)
+        return constant
+    if isinstance(expression, ProductExpression):
+        factor, rest = sorted(expression.args, key=lambda part: part.__class__ not in native_numeric_types)
+        if factor.__class__ in native_numeric_types:
+            return _add(rest, times * factor, terms, at)
+    if isinstance(expression, NegationExpression):
+        return _add(expression.args[0], -times, terms, at)
+    if id(expression) not in at:
+        raise ValueError(f"{expression} is no sum of multiples of variables")
+    terms[at[id(expression)]] = terms.get(at[id(expression)], 0.0) + times
+    return 0.0
 
 
-def _bound(value: Any, missing: float) -> float:
-    return missing if value is None else float(evaluate_expression(value))
-
-
-__all__ = ["Floats", "Integers", "Label", "LabelledLp", "PriceMap", "compile_model", "compile_prices"]
+__all__ = ["Floats", "Integers", "Label", "LabelledLp", "PriceMap", "compile_model", "compile_prices", "program_of"]

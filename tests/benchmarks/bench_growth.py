@@ -4,14 +4,15 @@ The demo plant is written with 1, 12, 52 and 365 periods linked by tanks, and wi
 size a process of its own times, in turn:
 
 read      reading and checking all files (`read_scenario`)
-build     the algebra and its arrays (`build_model`, `compile_model`)
+build     the algebra and its arrays (`program_of`)
 hand      the same program from the same labelled numbers, as plain loops that fill arrays: no Pyomo, no labels of rows
 solve     HiGHS on the arrays of `build`
 hand run  HiGHS on the arrays of `hand`, with the same options
-plan      the whole plan (`make_plan`): building, solving, proving, every balance again from the tables, the money
+prove     from the solution to a plan (`plan_of`): the certificate, every balance again from the tables, the money
 
-Both programs must have the same size and the same best margin. Peak memory is that of further processes, which do one
-of these things once, above that of a process that only loads the libraries.
+Both programs must have the same size and the same best margin. Peak memory is that of further processes, which go as far
+as one of these things, once, above that of a process that only loads the libraries. What takes longer than half a minute
+is done once.
 The aims: build at most 4 times hand; between 12 periods and the most, build grows with an exponent of at most 1.1.
 Run it from anywhere: `python tests/benchmarks/bench_growth.py --periods 1 12 52 365 --furnaces 12 60 --repetitions 5`.
 """
@@ -36,8 +37,9 @@ if TYPE_CHECKING:
 
 ROOT = Path(__file__).resolve().parents[2]
 AIM, EXPONENT = 4.0, 1.1
-TIMED = ("read", "build", "hand", "solve", "hand run", "plan")
-MEMORY = ("libraries", "read", "hand", "build", "solve", "plan")
+LONG = 30.0
+TIMED = ("read", "build", "hand", "solve", "hand run", "prove")
+MEMORY = ("read", "hand", "build", "prove")
 Row = dict[int, float]
 
 
@@ -153,9 +155,7 @@ class MonthByHand:
             for name, (_, kind) in case.trades.items()
         }
         self.conversion = {name: column() for name in case.conversions}
-        self.stock = {
-            line: column(-price(f"stocks.{item}.holding", t)) for item in case.stocks for line in self.lines(item)
-        }
+        self.stock = {line: column(-price(f"stocks.{item}.holding", t)) for item in case.stocks for line in self.lines(item)}
 
     def lines(self, item: str) -> tuple[str, ...]:
         """What is kept apart in a tank."""
@@ -313,120 +313,160 @@ class MonthByHand:
 # ---------------------------------------------------------------------------------- times and memory
 
 
-def quiet() -> None:
-    """The first solver of a process prints a banner on standard output, which is ours."""
-    import os
-
-    kept = os.dup(1)
-    with open(os.devnull, "w") as nowhere:
-        os.dup2(nowhere.fileno(), 1)
-        __import__("highspy").Highs()
-    os.dup2(kept, 1)
-    os.close(kept)
-
-
 def timed(path: Path, repetitions: int, solving: bool) -> dict[str, Any]:
     """Seconds of work of each thing, as medians, and the sizes and margins of both programs."""
     import gc
 
-    from olefinlp.answers.plan import make_plan
+    from olefinlp.answers.plan import plan_of
     from olefinlp.inputs.scenario import read_scenario
-    from olefinlp.lp.algebra import build_model
-    from olefinlp.lp.compile import compile_model
+    from olefinlp.lp.compile import program_of
     from olefinlp.lp.solver import Solver
 
     gc.set_threshold(100_000, 50, 100)  # as the program does at its start
-    quiet()
-    case = read_scenario(path).case
-    case.charges_in, case.charged_parcels  # noqa: B018 - both ways find them there
-    lp, hand = compile_model(build_model(case)), ByHand(case)
-    things: dict[str, Callable[[], object]] = {
-        "read": lambda: read_scenario(path),
-        "build": lambda: compile_model(build_model(case)),
-        "hand": lambda: ByHand(case),
-    }
+    seconds: dict[str, list[float]] = {}
+
+    def clocked(name: str, thing: Callable[[], Any]) -> Any:
+        gc.collect()
+        start = time.process_time()
+        result = thing()
+        seconds.setdefault(name, []).append(time.process_time() - start)
+        return result
+
+    scenario = read_scenario(path)
+    for _ in range(repetitions):
+        clocked("read", lambda: read_scenario(path))
+        lp = clocked("build", lambda: program_of(scenario.case))
+        hand = clocked("hand", lambda: ByHand(scenario.case))
     found: dict[str, Any] = {
-        "size": [len(lp.rows), len(lp.columns), len(lp.value)],
+        "size": [len(lp.rows), len(lp.columns) - 1, len(lp.value)],  # less the column that is always nothing
         "hand size": [len(hand.row_low), len(hand.cost), len(hand.value)],
     }
-    if solving:
-        solution = Solver(lp).solve().solution
-        found["margin"], found["hand margin"] = solution and solution.objective, hand.margin()
-        things |= {"solve": lambda: Solver(lp).solve(), "hand run": hand.margin, "plan": lambda: make_plan(case.scenario)}
-    seconds: dict[str, list[float]] = {name: [] for name in things}
-    for _ in range(repetitions):
-        for name, thing in things.items():
-            gc.collect()
-            start = time.process_time()
-            thing()
-            seconds[name].append(time.process_time() - start)
+    for repetition in range(repetitions if solving else 0):
+        if repetition and max(seconds["solve"]) > LONG:
+            break
+        solution = clocked("solve", lambda: Solver(lp).solve()).solution
+        found["margin"], found["hand margin"] = solution.objective, clocked("hand run", hand.margin)
+        clocked("prove", lambda: plan_of(scenario, lp, solution))  # noqa: B023 - called at once
     found["seconds"] = {name: statistics.median(times) for name, times in seconds.items()}
     found["ratio"] = statistics.median(b / h for b, h in zip(seconds["build"], seconds["hand"], strict=True))
     return found
 
 
 def peak(path: Path, thing: str) -> float:
-    """Peak memory of this process in MB after one thing was done once."""
+    """Peak memory of this process in MB after it has gone as far as one thing, once."""
     import resource
 
-    import olefinlp.answers.plan as plan
+    from olefinlp.answers.plan import make_plan
     from olefinlp.inputs.scenario import read_scenario
+    from olefinlp.lp.compile import program_of
 
-    quiet()
     if thing != "libraries":
-        case = read_scenario(path).case
-        if thing == "hand":
-            ByHand(case)
-        elif thing == "build":
-            plan.compile_model(plan.build_model(case))
-        elif thing == "solve":
-            plan.Solver(plan.compile_model(plan.build_model(case))).solve()
-        elif thing == "plan":
-            plan.make_plan(case.scenario)
+        scenario = read_scenario(path)
+        further: dict[str, Callable[[], object]] = {
+            "read": lambda: None,
+            "hand": lambda: ByHand(scenario.case),
+            "build": lambda: program_of(scenario.case),
+            "prove": lambda: make_plan(scenario),
+        }
+        further[thing]()
     return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
 
 
-def process(*arguments: object) -> Any:
-    """What this file prints as JSON when it is run again with other arguments."""
-    command = [sys.executable, str(Path(__file__).resolve()), *map(str, arguments)]
+def step(name: str, path: Path, *arguments: object) -> Any:
+    """What one step prints last, as JSON, run in a process of its own."""
+    command = [sys.executable, str(Path(__file__).resolve()), "--step", name, "--path", str(path), *map(str, arguments)]
     done = subprocess.run(command, capture_output=True, encoding="utf-8", check=False)
     if done.returncode:
-        raise SystemExit(f"{arguments} ended with {done.returncode}\n{done.stderr}")
-    return json.loads(done.stdout)
+        raise SystemExit(f"{name} {path.name} ended with {done.returncode}\n{done.stderr}")
+    return json.loads(done.stdout.splitlines()[-1])
+
+
+def taken(options: argparse.Namespace) -> Any:
+    """One step, in this process."""
+    sys.path.append(str(ROOT))
+    if options.step == "write":
+        from large_plant import write_scenario
+
+        return str(write_scenario(options.path, options.periods[0], options.furnaces[0]))
+    if options.step == "time":
+        return timed(options.path, options.repetitions, options.solve_up_to > 0)
+    return peak(options.path, options.step)
 
 
 def measured(folder: Path, periods: int, furnaces: int, options: argparse.Namespace) -> dict[str, Any]:
     """Times and memory of one size. Raises `SystemExit` when the two programs differ."""
-    home = folder / f"{periods}_{furnaces}"
-    path = home / "scenario.yaml"
-    process("--write", home, "--periods", periods, "--furnaces", furnaces)
-    solving = ["--solving"] if periods * furnaces <= options.solve_up_to else []
-    found: dict[str, Any] = process("--timed", path, "--repetitions", options.repetitions, *solving)
+    path = Path(step("write", folder / f"{periods}_{furnaces}", "--periods", periods, "--furnaces", furnaces))
+    solving = int(periods * furnaces <= options.solve_up_to)
+    found: dict[str, Any] = step("time", path, "--repetitions", options.repetitions, "--solve-up-to", solving)
     if found["size"] != found["hand size"]:
         raise SystemExit(f"{periods} periods, {furnaces} furnaces: the sizes differ, {found['size']} and {found['hand size']}")
     if solving and not math.isclose(found["margin"], found["hand margin"], rel_tol=1e-7):
         raise SystemExit(f"the best margins differ: {found['margin']} and {found['hand margin']}")
-    things = MEMORY if solving else MEMORY[: MEMORY.index("solve")]
-    megabytes = {thing: process("--peak", thing, "--timed", path) for thing in things}
-    libraries = megabytes.pop("libraries")
-    return found | {"periods": periods, "memory": {thing: peak - libraries for thing, peak in megabytes.items()}}
+    libraries = step("libraries", path)
+    found["memory"] = {name: step(name, path) - libraries for name in (MEMORY if solving else MEMORY[:3])}
+    return found | {"periods": periods}
 
 
-def exponent(sizes: list[dict[str, Any]], thing: str) -> str:
-    """How time grows from 12 periods to the most: time ∝ periods^exponent."""
-    there = [one for one in sizes if one["periods"] >= 12 and thing in one["seconds"]]
-    if len(there) < 2 or there[0]["periods"] == there[-1]["periods"]:
-        return "   -"
+# ---------------------------------------------------------------------------------- report
+
+
+def exponent(sizes: list[dict[str, Any]], of: str, name: str) -> float | None:
+    """How something grows from 12 periods (or the fewest above one) to the most: it is ∝ periods^exponent."""
+    there = [one for one in sizes if one["periods"] > 1 and name in one[of]]
+    there = [one for one in there if one["periods"] >= 12] or there
+    if len(there) < 2:
+        return None
     first, last = there[0], there[-1]
-    grown = math.log(last["seconds"][thing] / first["seconds"][thing])
-    return f"{grown / math.log(last['periods'] / first['periods']):.2f}"
+    return math.log(last[of][name] / first[of][name]) / math.log(last["periods"] / first["periods"])
+
+
+def line(name: str, cells: Iterable[str], last: str = "") -> str:
+    """One line of the report."""
+    return f"{name:<26}" + "".join(f"{cell:>12}" for cell in cells) + f"{last:>10}"
+
+
+def grown(sizes: list[dict[str, Any]], of: str, name: str, form: str) -> str:
+    """A line of what was measured of one thing at each size, and how it grows."""
+    power = exponent(sizes, of, name)
+    cells = [format(one[of][name], form) if name in one[of] else "-" for one in sizes]
+    return line(f"  {name}", cells, "-" if power is None else f"{power:.2f}")
 
 
 def report(furnaces: int, sizes: list[dict[str, Any]]) -> str:
-    """The measurements of one number of furnaces as lines."""
-    lines = [f"{furnaces} furnaces" + "".join(f"{one['periods']:>12}" for one in sizes) + "   exponent"]
-
-    def line(name: str, cells: Iterable[str], end: str = "") -> None:
-        lines.append(f"{name:<{len(lines[0].split('furnaces')[0]) + 18}}"[:24] + "".join(f"{cell:>12}" for cell in cells) + end)
-
+    """The measurements of one number of furnaces."""
+    lines = [line(f"{furnaces} furnaces, periods", (str(one["periods"]) for one in sizes), "exponent")]
+    for position, name in enumerate(("rows", "columns", "non-zeros")):
+        lines.append(line(name, (str(one["size"][position]) for one in sizes)))
+    lines.append("seconds of work (medians)")
+    lines += [grown(sizes, "seconds", name, ".3f") for name in TIMED]
+    lines.append(line("ratio build / hand", (f"{one['ratio']:.2f}" for one in sizes)))
+    lines.append("peak memory above that of the libraries, MB")
+    lines += [grown(sizes, "memory", name, ".0f") for name in MEMORY]
+    for name in ("hand", "build"):
+        cells = (f"{one['memory'][name] / one['periods']:.2f}" for one in sizes)
+        lines.append(line(f"{name}, MB a period", cells))
     return "\n".join(lines)
+
+
+def main() -> None:
+    """Measure every size and print."""
+    parser = argparse.ArgumentParser(description=(__doc__ or "").splitlines()[0])
+    parser.add_argument("--periods", type=int, nargs="+", default=[1, 12, 52, 365])
+    parser.add_argument("--furnaces", type=int, nargs="+", default=[12, 60])
+    parser.add_argument("--repetitions", type=int, default=5)
+    parser.add_argument("--solve-up-to", type=int, default=700, help="periods × furnaces beyond which nothing is solved")
+    parser.add_argument("--step", help="take one step in this process and print what it finds as JSON")
+    parser.add_argument("--path", type=Path)
+    options = parser.parse_args()
+    if options.step:
+        print(json.dumps(taken(options)))
+        return
+    with tempfile.TemporaryDirectory() as name:
+        for furnaces in options.furnaces:
+            sizes = [measured(Path(name), periods, furnaces, options) for periods in options.periods]
+            print(report(furnaces, sizes), flush=True)
+    print(f"aims: build / hand at most {AIM:g}; exponent of build at most {EXPONENT:g}")
+
+
+if __name__ == "__main__":
+    main()

@@ -36,7 +36,7 @@ def write_scenario(folder: Path, periods: int, furnaces: int = FURNACES) -> Path
     if furnaces % FURNACES:
         raise ValueError(f"the plant has {FURNACES} furnaces, so {furnaces} are not a multiple of it")
     times = furnaces // FURNACES
-    shutil.copytree(PLANT, folder / "plant")
+    shutil.copytree(PLANT, folder / "plant")  # makes the folder too
     groups = _write_plant(folder / "plant", times)
     yaml = YAML(typ="safe", pure=True)
     demo = yaml.load(SCENARIO)
