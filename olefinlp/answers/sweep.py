@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import contextlib
 import os
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Generator, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import FIRST_COMPLETED, Future, ProcessPoolExecutor, ThreadPoolExecutor, wait
+from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, Protocol
 
@@ -17,6 +18,7 @@ from olefinlp.answers.sweep_readings import DEFAULT, ReadOut, read_out
 from olefinlp.answers.sweep_terms import OwnPrograms, SweepTerms
 from olefinlp.inputs.scenario import Scenario
 from olefinlp.inputs.sweep_cases import SweepCases, Values
+from olefinlp.inputs.varied import PRICE
 from olefinlp.lp.sweep import BLOCK, NO_CASE, OPTIMAL, Block, SolvedBlock, Sweeper, SweepProgram, solve_block, sweep_program
 
 if TYPE_CHECKING:
@@ -67,7 +69,7 @@ class Sweep:
     @property
     def prices_only(self) -> bool:
         """Whether nothing but prices vary, so that today's plan stays possible in every case."""
-        return all(varied.kind == "price" for varied in self.cases.varied)
+        return prices_only(self.cases)
 
     @property
     def failed(self) -> int:
@@ -83,23 +85,18 @@ class Sweep:
 
     def reason(self, number: int) -> str:
         """Why a case (from 0) has no plan; empty where it has one."""
-        return self.reasons.get(number, "" if self.status[number] == OPTIMAL else ENDINGS[int(self.status[number])])
+        return _reason(self.reasons, number, int(self.status[number]))
 
     def columns(self, first: int = 0, last: int | None = None) -> dict[str, Any]:
         """Columns of the table, for some rows: case (from 1), label, varied numbers, status, reason, margins, readings."""
-        rows = slice(first, len(self) if last is None else last)
-        numbers = range(rows.start, rows.stop)
-        found: dict[str, Any] = {"case": np.arange(rows.start, rows.stop) + 1}
-        if self.cases.labels:
-            found["label"] = list(self.cases.labels[rows])
-        found |= {varied.name: self.cases.values[rows, at] for at, varied in enumerate(self.cases.varied)}
-        found["status"] = [ENDINGS[int(one)].partition(":")[0] for one in self.status[rows]]
-        found["reason"] = [self.reason(number) for number in numbers]
-        found |= {"margin": self.margin[rows], "held": self.held[rows]}
-        return found | {name: self.readings[rows, at] for at, name in enumerate(self.read_out.names)}
+        rows = slice(first, len(self) if last is None else min(last, len(self)))
+        block = SolvedBlock(first, self.status[rows], self.margin[rows], self.held[rows], self.readings[rows])
+        return columns_of(self.cases, self.read_out, block, self.reasons)
 
     def to_frame(self) -> pd.DataFrame:
-        """One row a case: its number, the varied numbers, how it ended, its margins and readings."""
+        """One row a case: `case` from 1, its `label` if it has one, the varied numbers by their path, how it ended
+        (`status`, `reason`), `margin`, `held`, and the readings by their names (`bought.…`, `sold.…`, `worth.…`).
+        """
         import pandas as pd
 
         return pd.DataFrame(self.columns())
@@ -120,8 +117,33 @@ class Sweep:
         """A sweep in a notebook: what it says, and its first rows."""
         import html
 
-        rows = self.to_frame().head(10).to_html(index=False, float_format=lambda value: f"{value:,.4g}")
+        import pandas as pd
+
+        rows = pd.DataFrame(self.columns(0, 10)).to_html(index=False, float_format=lambda value: f"{value:,.4g}")
         return f"<p>{html.escape(str(self))}</p>{rows}"
+
+
+def columns_of(cases: SweepCases, read: ReadOut, block: SolvedBlock, reasons: Mapping[int, str]) -> dict[str, Any]:
+    """Columns of the table for the cases of one block."""
+    rows = slice(block.first, block.first + len(block.status))
+    found: dict[str, Any] = {"case": np.arange(rows.start, rows.stop) + 1}
+    if cases.labels:
+        found["label"] = list(cases.labels[rows])
+    found |= {varied.name: cases.values[rows, at] for at, varied in enumerate(cases.varied)}
+    endings = block.status.tolist()
+    found["status"] = [ENDINGS[one].partition(":")[0] for one in endings]
+    found["reason"] = [_reason(reasons, number, one) for number, one in enumerate(endings, block.first)]
+    found |= {"margin": block.margin, "held": block.held}
+    return found | {name: block.readings[:, at] for at, name in enumerate(read.names)}
+
+
+def _reason(reasons: Mapping[int, str], number: int, status: int) -> str:
+    return reasons.get(number, "" if status == OPTIMAL else ENDINGS[status])
+
+
+def prices_only(cases: SweepCases) -> bool:
+    """Whether nothing but prices vary."""
+    return all(varied.kind == PRICE for varied in cases.varied)
 
 
 class Cluster(Protocol):
@@ -134,6 +156,10 @@ class Cluster(Protocol):
         """Send what every function needs, once."""
 
 
+Solved = tuple[SolvedBlock, dict[int, str]]
+"""A block, and why cases of it have no plan, by their number."""
+
+
 @dataclass(frozen=True)
 class Job:
     """A sweep ready to be solved: cases, base plan, what is read, and how the cases stand in the program."""
@@ -144,6 +170,11 @@ class Job:
     terms: SweepTerms | None
     program: SweepProgram | None
     note: str = ""
+
+    @property
+    def prices_only(self) -> bool:
+        """Whether nothing but prices vary."""
+        return prices_only(self.cases)
 
 
 def prepare(cases: SweepCases, measures: Sequence[str] = DEFAULT, base: Plan | None = None) -> Job:
@@ -166,23 +197,44 @@ def run_sweep(
     workers: int | None = None,
     engine: str | Cluster = THREADS,
     skip: Iterable[int] = (),
-) -> Iterator[tuple[SolvedBlock, dict[int, str]]]:
+) -> Generator[Solved, None, None]:
     """Solve block after block; gives each as it is done, with reasons by case, in any order.
 
-    `workers` are as many as there are processors if not given. `skip` are first cases of blocks that are done already.
+    `workers` are as many as there are processors if not given; a cluster has its own. `skip` are first cases of blocks
+    that are done already. Raises `ValueError` for an unknown engine, or less than one worker.
     """
-    firsts = [first for first in range(0, len(job.cases), BLOCK) if first not in set(skip)]
+    if isinstance(engine, str) and engine not in (THREADS, PROCESSES):
+        raise ValueError(f"`{engine}` is no engine; known: {THREADS}, {PROCESSES}, or a client of a cluster")
+    if workers is not None and workers < 1:
+        raise ValueError(f"{workers} workers cannot solve anything; at least 1")
+    done = frozenset(skip)
+    firsts = [first for first in range(0, len(job.cases), BLOCK) if first not in done]
     if job.terms is None or job.program is None:
-        for first in firsts:
-            yield solve_own(job.cases, job.base, job.read_out, first, min(BLOCK, len(job.cases) - first))
-        return
-    blocks = ((first, job.terms.block(first, BLOCK)) for first in firsts)
-    for first, solved in _solved(job.program, blocks, workers, engine):
-        yield _with_reasons(job, solved, job.terms.refused(first, BLOCK))
+        return _own_blocks(job, firsts)
+    return _shared_blocks(job, job.terms, job.program, firsts, workers, engine)
 
 
-def _with_reasons(job: Job, solved: SolvedBlock, refused: dict[int, str]) -> tuple[SolvedBlock, dict[int, str]]:
-    """Why cases have no plan; cases that are not valid, whatever the program says, lose their numbers."""
+def _own_blocks(job: Job, firsts: Iterable[int]) -> Generator[Solved, None, None]:
+    """Blocks of cases that have a program of their own each."""
+    for first in firsts:
+        yield solve_own(job.cases, job.base, job.read_out, first, min(BLOCK, len(job.cases) - first))
+
+
+def _shared_blocks(
+    job: Job, terms: SweepTerms, program: SweepProgram, firsts: Iterable[int], workers: int | None, engine: str | Cluster
+) -> Generator[Solved, None, None]:
+    """Blocks of cases on one program; blocks are put together as workers come free."""
+    blocks = ((first, terms.block(first, BLOCK)) for first in firsts)
+    with contextlib.closing(_solved(program, blocks, workers, engine)) as found:
+        for first, solved in found:
+            yield _judged(job, solved, *terms.judged(first, BLOCK))
+
+
+def _judged(job: Job, solved: SolvedBlock, refused: dict[int, str], apart: Iterable[int]) -> Solved:
+    """Why cases have no plan; cases that are not valid, whatever the program says, lose their numbers.
+
+    Cases `apart` could not be put together and are solved by themselves.
+    """
     case, rows = job.base.quantities.case, job.base.lp.rows
     clashes = {solved.first + at: clash_words(case, [rows[row] for row in found]) for at, found in solved.clashing.items()}
     reasons = {number: words for number, words in clashes.items() if words} | refused
@@ -190,17 +242,27 @@ def _with_reasons(job: Job, solved: SolvedBlock, refused: dict[int, str]) -> tup
         at = number - solved.first
         solved.status[at] = NO_CASE
         solved.margin[at], solved.held[at], solved.readings[at] = np.nan, np.nan, np.nan
+    for number in apart:
+        own, why = solve_own(job.cases, job.base, job.read_out, number, 1)
+        at = number - solved.first
+        solved.status[at], solved.margin[at], solved.held[at] = own.status[0], own.margin[0], own.held[0]
+        solved.readings[at] = own.readings[0]
+        reasons.pop(number, None)
+        reasons |= why
+    if not job.prices_only:
+        solved.held[:] = np.nan  # today's plan may not be possible under other limits
     return solved, reasons
 
 
 def _solved(
     program: SweepProgram, blocks: Iterator[tuple[int, Block]], workers: int | None, engine: str | Cluster
-) -> Iterator[tuple[int, SolvedBlock]]:
+) -> Generator[tuple[int, SolvedBlock], None, None]:
     """Blocks solved by one worker here, by threads, by processes, or elsewhere."""
     count = workers or os.cpu_count() or 1
     if not isinstance(engine, str):
-        sent = engine.scatter(program, broadcast=True)
-        yield from _in_flight(lambda block: engine.submit(_solve_once, sent, block, pure=False), blocks, AHEAD * count)
+        sent = engine.scatter(program, broadcast=True, hash=False)  # by content: a sweep that ends would take it from the next
+        most = AHEAD * max(count, _size_of(engine))
+        yield from _in_flight(lambda block: engine.submit(_solve_once, sent, block, pure=False), blocks, most)
     elif count == 1:
         sweeper = Sweeper(program)
         for first, block in blocks:
@@ -209,19 +271,34 @@ def _solved(
         local = _Local(program)
         with ThreadPoolExecutor(count) as pool:
             yield from _in_flight(lambda block: pool.submit(local.solve, block), blocks, AHEAD * count)
-    elif engine == PROCESSES:
-        import multiprocessing
+    else:
+        yield from _in_processes(program, blocks, count)
 
-        context = multiprocessing.get_context("spawn")  # a forked copy of a running solver is nothing to rely on
+
+def _size_of(engine: Cluster) -> int:
+    """How many functions a cluster runs at once, where it says so."""
+    cores = getattr(engine, "ncores", None)
+    return sum(cores().values()) if cores else 1
+
+
+def _in_processes(
+    program: SweepProgram, blocks: Iterator[tuple[int, Block]], count: int
+) -> Generator[tuple[int, SolvedBlock], None, None]:
+    """Blocks solved by other processes of this machine."""
+    import multiprocessing
+
+    context = multiprocessing.get_context("spawn")  # a forked copy of a running solver is nothing to rely on
+    try:
         with ProcessPoolExecutor(count, context, _keep, (program,)) as pool:
             yield from _in_flight(lambda block: pool.submit(_solve_kept, block), blocks, AHEAD * count)
-    else:
-        raise ValueError(f"`{engine}` is no engine; known: {THREADS}, {PROCESSES}, or a client of a cluster")
+    except BrokenProcessPool as error:
+        hint = 'hint: a script that starts processes needs `if __name__ == "__main__":` around its sweep; else use threads'
+        raise RuntimeError(f"a worker process ended before its work was done\n{hint}") from error
 
 
 def _in_flight(
     submit: Callable[[Block], Any], blocks: Iterator[tuple[int, Block]], most: int
-) -> Iterator[tuple[int, SolvedBlock]]:
+) -> Generator[tuple[int, SolvedBlock], None, None]:
     """Blocks handed out as workers come free, given back as they are done; nothing new after a stop."""
     waiting: dict[Any, int] = {}
     try:
@@ -269,6 +346,9 @@ _KEPT: dict[str, Sweeper] = {}
 
 
 def _keep(program: SweepProgram) -> None:
+    import signal
+
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C reaches all processes of a terminal: the first one ends the others
     _KEPT["sweeper"] = Sweeper(program)
 
 
@@ -291,8 +371,6 @@ def gathered(job: Job, solved: Iterable[tuple[SolvedBlock, Mapping[int, str]]]) 
         rows = slice(block.first, block.first + len(block.status))
         status[rows], margin[rows], held[rows], readings[rows] = block.status, block.margin, block.held, block.readings
         reasons.update(why)
-    if not all(varied.kind == "price" for varied in job.cases.varied):
-        held[:] = np.nan  # today's plan may not be possible under other limits
     return Sweep(job.cases, job.base, job.read_out, status, margin, held, readings, reasons, job.terms is not None, job.note)
 
 
@@ -322,7 +400,8 @@ def sweep(
     [75.0, 47.6, 0.0]
     """
     job = job_of(scenario, vary, how, measures)
-    return gathered(job, counted(run_sweep(job, workers=workers, engine=engine), len(job.cases), told))
+    with contextlib.closing(run_sweep(job, workers=workers, engine=engine)) as solved:
+        return gathered(job, counted(solved, len(job.cases), told))
 
 
 def job_of(scenario: Scenario | Plan, vary: Any, how: str | None, measures: Sequence[str]) -> Job:
@@ -334,9 +413,7 @@ def job_of(scenario: Scenario | Plan, vary: Any, how: str | None, measures: Sequ
     return prepare(vary if isinstance(vary, SweepCases) else cases_of(today, vary, how), measures, base)
 
 
-def counted(
-    solved: Iterable[tuple[SolvedBlock, dict[int, str]]], count: int, told: Callable[[int, int], object] | None
-) -> Iterator[tuple[SolvedBlock, dict[int, str]]]:
+def counted(solved: Iterable[Solved], count: int, told: Callable[[int, int], object] | None) -> Iterator[Solved]:
     """The same blocks, with word of how many cases are done."""
     done = 0
     for block, reasons in solved:

@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from olefinlp.answers.sweep_readings import ReadOut, assembled
-from olefinlp.answers.sweep_terms import in_a_line, lp_of
+from olefinlp.answers.sweep_refused import in_a_line
+from olefinlp.answers.sweep_terms import lp_of
 from olefinlp.inputs.case import Case
 from olefinlp.inputs.findings import InputError
 from olefinlp.inputs.sweep_cases import SweepCases, Values
@@ -91,4 +92,4 @@ def relabelled(read: ReadOut, base: LabelledLp, lp: LabelledLp) -> ReadOut:
         row = lp.row_at.get(base.rows[reading.row], -1) if reading.row >= 0 else -1
         if (reading.row >= 0) == (row >= 0):
             found.append(dataclasses.replace(reading, columns=columns, row=row))
-    return assembled(found, lp)
+    return assembled(found)

@@ -10,7 +10,7 @@ import numpy as np
 from olefinlp.inputs.case import Case
 from olefinlp.inputs.findings import near_name
 from olefinlp.lp.compile import LabelledLp
-from olefinlp.lp.sweep import Readings
+from olefinlp.lp.sweep import Readings, sums_of
 
 MARGIN, HELD = "margin", "held"
 DEFAULT = ("margin", "feeds", "products", "loads", "worths")
@@ -58,19 +58,16 @@ def read_out(case: Case, lp: LabelledLp, measures: Iterable[str] = DEFAULT) -> R
         if measure not in MEASURES:
             raise ValueError(f"`{measure}` is no measure; {near_name(measure, [MARGIN, *MEASURES])}")
         found += MEASURES[measure](case, lp)
-    return assembled(found, lp)
+    return assembled(found)
 
 
-def assembled(found: Iterable[Reading], lp: LabelledLp) -> ReadOut:
+def assembled(found: Iterable[Reading]) -> ReadOut:
     """Readings in the order of the arrays that they become."""
     ordered = sorted(found, key=lambda reading: KINDS.index(reading.kind))
     sums = [r for r in ordered if r.kind == "sum"]
     shares, worths = [r for r in ordered if r.kind == "share"], [r for r in ordered if r.kind == "worth"]
-    matrix = np.zeros((len(sums), len(lp.columns)))
-    for line, reading in enumerate(sums):
-        matrix[line, list(reading.columns)] = reading.scale
     arrays = Readings(
-        sums=matrix,
+        sums=sums_of([r.columns for r in sums], [r.scale for r in sums]),
         share_rows=np.array([r.row for r in shares], dtype=np.int32),
         worth_rows=np.array([r.row for r in worths], dtype=np.int32),
         worth_scales=np.array([r.scale for r in worths]),

@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from olefinlp.answers.sweep_refused import in_a_line, refused_prices
 from olefinlp.inputs.findings import InputError
 from olefinlp.inputs.prices import AMOUNT, NUMBER, Price, typed_of
 from olefinlp.inputs.scenario import Scenario
@@ -37,14 +38,15 @@ Effect = dict[str, Floats]
 """Part of the program → its whole array, for one value of one number."""
 
 
-def in_a_line(error: InputError) -> str:
-    """Why a case is no valid scenario."""
-    return "; ".join(f"{f.path}: {f.message}" if f.path else f.message for f in error.findings if f.level == "error")
-
-
 def _there(found: dict[float, Effect | None]) -> Iterator[tuple[float, Effect]]:
     """Values that make a valid scenario, with what they do."""
     return ((value, effect) for value, effect in found.items() if effect is not None)
+
+
+def _not_above(low: Floats, high: Floats) -> Floats:
+    """Minima that meet their maximum, and are above it by rounding alone, are put back onto it."""
+    with np.errstate(invalid="ignore"):
+        return np.where((low > high) & (low - high <= AGREES * np.abs(high)), high, low)
 
 
 class OwnPrograms(Exception):
@@ -70,6 +72,11 @@ class Moved:
     slope: Floats | None
     values: Floats
     table: Floats
+
+    @property
+    def bounds(self) -> bool:
+        """Whether the places are rows."""
+        return self.part in ("row_low", "row_high")
 
     def put(self, contents: Floats, values: Floats) -> None:
         """Add to the contents of some cases (cases × places) what this number changes; nothing where it has no value."""
@@ -99,6 +106,7 @@ class SweepTerms:
         self.invalid: dict[int, dict[float, str]] = {}
         """Varied number → its values that make no valid scenario, and why."""
         self.moved: dict[int, tuple[Moved, ...]] = {at: self._tried(at) for at in self.others}
+        self.paid_and_most = self._paid_and_most()
         self.order = self._price_order()
         self._compare()
 
@@ -177,7 +185,7 @@ class SweepTerms:
         own, slope = base[places], None
         if straight:
             far = max(known.tolist(), key=lambda value: abs(value - start))
-            slope = (effects[far][part][places] - own) / (far - start)
+            slope = (effects[far][part][places] - own) / (far - start) if far != start else np.zeros(len(places))
         return Moved(part, places, own, start, slope, known, table[:, places])
 
     # ------------------------------------------------------------------------------ prices
@@ -252,6 +260,7 @@ class SweepTerms:
             columns, cost = self._joined(columns, cost, *parts["cost"])
         rows = np.union1d(parts["row_low"][0], parts["row_high"][0]).astype(np.int32)
         bounded = np.union1d(parts["low"][0], parts["high"][0]).astype(np.int32)
+        row_high, high = self._spread(rows, "row_high", parts), self._spread(bounded, "high", parts)
         entries, entry_values = parts["value"]
         return Block(
             first=first,
@@ -259,11 +268,11 @@ class SweepTerms:
             cost_columns=columns,
             cost=cost,
             rows=rows,
-            row_low=self._spread(rows, "row_low", parts),
-            row_high=self._spread(rows, "row_high", parts),
+            row_low=_not_above(self._spread(rows, "row_low", parts), row_high),
+            row_high=row_high,
             columns=bounded,
-            low=self._spread(bounded, "low", parts),
-            high=self._spread(bounded, "high", parts),
+            low=_not_above(self._spread(bounded, "low", parts), high),
+            high=high,
             entries=entries,
             entry_values=entry_values,
         )
@@ -299,14 +308,13 @@ class SweepTerms:
 
     def _compare(self) -> None:
         """Some cases built whole: every entry must be what was put together."""
-        draws = np.random.default_rng(0)
-        count = len(self.cases)
-        chosen = {0, count - 1, *draws.integers(0, count, min(count, COMPARED)).tolist()} if count else set()
-        for number in sorted(chosen):
+        for number in self._to_compare():
+            if self._alone(self.cases.values[number : number + 1]):
+                continue  # not put together at all
             try:
                 whole = lp_of(self.cases.scenario_of(number))
             except InputError:
-                continue  # no valid case: it is found when it is solved, or before
+                continue  # no valid case: it is judged before it is given out
             if not same_shape(self.lp, whole):
                 raise OwnPrograms(f"case {number + 1} changes what is in the program at all")
             block = self.block(number, 1)
@@ -326,26 +334,83 @@ class SweepTerms:
                 if apart.any():
                     raise OwnPrograms("the varied numbers act on each other, so that their effects do not add")
 
+    def _to_compare(self) -> list[int]:
+        """The first and last case, some others, and for every two numbers that act together somewhere the case
+        in which both are farthest from today: a rare pair is not left to chance.
+        """
+        count = len(self.cases)
+        if not count:
+            return []
+        chosen = {0, count - 1, *np.random.default_rng(0).integers(0, count, min(count, COMPARED)).tolist()}
+        away = self._away(self.cases.values)
+        covered = np.eye(away.shape[1], dtype=bool)
+        for number in sorted(chosen):
+            covered |= np.outer(away[number] > 0, away[number] > 0)
+        for one in self.others:
+            for other in range(away.shape[1]):
+                together = np.minimum(away[:, one], away[:, other])
+                if covered[one, other] or not together.any():
+                    continue
+                number = int(together.argmax())
+                chosen.add(number)
+                covered |= np.outer(away[number] > 0, away[number] > 0)
+        return sorted(chosen)
+
+    def _away(self, values: Floats) -> Floats:
+        """How far each number of each case is from today, as a share of the farthest; 0 where it is as today."""
+        today = np.array([0.0 if p else v.first for v, p in zip(self.cases.varied, self.cases.percent, strict=True)])
+        away = np.abs(np.nan_to_num(values - today, nan=0.0))
+        size = away.max(axis=0, initial=0.0)
+        shares: Floats = away / np.where(size > 0, size, 1.0)
+        return shares
+
     # ------------------------------------------------------------------------------ cases that cannot be
 
-    def refused(self, first: int, count: int) -> dict[int, str]:
-        """Cases that are no valid scenario although a program could be solved: a price step out of order."""
+    def judged(self, first: int, count: int) -> tuple[dict[int, str], list[int]]:
+        """Cases that are no valid scenario, although a program could be solved, and why; cases to be solved by themselves.
+
+        A number of a case may be none that goes with today's other numbers (a maximum below today's minimum). Where
+        others of them vary too, the case is built whole to see whether they go together.
+        """
         values = self.cases.values[first : first + count]
-        prices = self.effective(values)
+        refused = {first + at: why for at, why in refused_prices(self.case, self.effective(values), len(values)).items()}
+        apart: list[int] = []
+        for at, why in sorted((self._too_much_to_take(first, count) | self._alone(values)).items()):
+            number = first + at
+            if number in refused:
+                continue
+            if why and np.count_nonzero(self._away(values[at : at + 1])[0, self.others]) < 2:
+                refused[number] = why
+                continue
+            try:
+                self.cases.scenario_of(number)
+            except InputError as error:
+                refused[number] = in_a_line(error)
+            else:
+                apart += [number] if why else []
+        return refused, apart
+
+    def _alone(self, values: Floats) -> dict[int, str]:
+        """Cases (from 0 in the block) with a number that is not valid while all others are as today."""
         found: dict[int, str] = {}
         for at, wrong in self.invalid.items():
             for value, why in wrong.items():
-                found |= dict.fromkeys((first + np.flatnonzero(values[:, at] == value)).tolist(), why)
-        for item, month in prices:
-            body, steps, step = item.rpartition(".tiers.")
-            if not steps:
-                continue
-            for by in (-1, 1):
-                other = (f"{body}.tiers.{int(step) + by}", month)
-                if other not in self.case.prices:
-                    continue
-                beside = prices.get(other, np.full(len(values), self.case.prices[other].value))
-                rising = (beside - prices[item, month]) * by * (-1 if body.startswith("outlets.") else 1)
-                for at in np.flatnonzero(rising < -1e-9).tolist():
-                    found[first + at] = f"the steps of {body} are out of order: a quantity discount needs whole-number decisions"
+                found |= dict.fromkeys(np.flatnonzero(values[:, at] == value).tolist(), why)
         return found
+
+    def _too_much_to_take(self, first: int, count: int) -> dict[int, str]:
+        """Cases (from 0 in the block) that take or pay for more than can be bought: a program has a plan even then."""
+        if not self.paid_and_most:
+            return {}
+        block = self.block(first, count)
+        place = {row: at for at, row in enumerate(block.rows.tolist())}
+        wrong = [block.row_low[:, place[paid]] > block.row_high[:, place[most]] for paid, most in self.paid_and_most]
+        return dict.fromkeys(np.flatnonzero(np.any(wrong, axis=0)).tolist(), "")
+
+    def _paid_and_most(self) -> list[tuple[int, int]]:
+        """Rows of take-or-pay and of the most that can be bought, where both move."""
+        moving = {row for several in self.moved.values() for moved in several for row in moved.places.tolist() if moved.bounds}
+        keys = [(label, month) for label, source in self.case.sources.items() if source.take_or_pay for month in self.case.months]
+        at = self.lp.row_at
+        pairs = [(at.get(("take_or_pay_limit", *key), -1), at.get(("purchase_limit", *key), -1)) for key in keys]
+        return [pair for pair in pairs if moving.issuperset(pair)]

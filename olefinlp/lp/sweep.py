@@ -7,6 +7,7 @@ cases, on how they are shared out, or on who solves them.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 
 import highspy
@@ -14,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from olefinlp.lp.certificate import CertificateError, Solved, Terms, certificates, prove, terms_of
-from olefinlp.lp.compile import Floats, Integers, LabelledLp
+from olefinlp.lp.compile import Floats, Integers, LabelledLp, Lines
 from olefinlp.lp.neighbours import NeighbourError, from_nothing
 from olefinlp.lp.solver import Outcome, Solver, Status
 
@@ -30,11 +31,11 @@ OPTIMAL, IMPOSSIBLE, ENDLESS, UNPROVEN, NO_CASE = 0, 1, 2, 3, 4
 class Readings:
     """What is read out of an optimum.
 
-    `sums` (readings × columns): sums of values; `shares`: for each a row and what its activity is compared with, the
-    row's maximum in that case; `worths`: for each a row and the scale of its |dual|.
+    `sums` has a line for each sum of values; shares: for each a row whose activity is compared with its maximum in
+    that case; worths: for each a row and the scale of its |dual|.
     """
 
-    sums: Floats
+    sums: Lines
     share_rows: Integers
     worth_rows: Integers
     worth_scales: Floats
@@ -42,7 +43,19 @@ class Readings:
     @property
     def count(self) -> int:
         """How many numbers a case gives."""
-        return len(self.sums) + len(self.share_rows) + len(self.worth_rows)
+        return self.sums.count + len(self.share_rows) + len(self.worth_rows)
+
+
+def sums_of(columns: Sequence[Sequence[int]], scales: Sequence[float]) -> Lines:
+    """Sums of values of some columns, each times its scale.
+
+    No matrix product does it: that sums in an order which depends on how many cases stand together, and on threads.
+    """
+    sizes = np.array([len(own) for own in columns], dtype=np.intp)
+    filled = np.flatnonzero(sizes)
+    across = np.array([column for own in columns for column in own], dtype=np.intp)
+    starts = (np.cumsum(sizes) - sizes)[filled]
+    return Lines(len(columns), filled, starts, across, np.repeat(np.array(scales, dtype=float), sizes))
 
 
 @dataclass(frozen=True)
@@ -59,7 +72,10 @@ class SweepProgram:
 
 @dataclass(frozen=True)
 class Block:
-    """Some cases, one line each: `cost` of all `cost_columns`, bounds of `rows` and `columns`, non-zeros at `entries`."""
+    """Some cases, one line each: `cost` of all `cost_columns`, bounds of `rows` and `columns`, non-zeros at `entries`.
+
+    Every block of a sweep moves the same places, so that nothing of one block is left in the program for the next.
+    """
 
     first: int
     count: int
@@ -138,6 +154,7 @@ class Sweeper:
         for at in range(block.count):
             if upside_down[at]:
                 status[at] = IMPOSSIBLE
+                clashing[at] = tuple(block.rows[row_low[at] > row_high[at]].tolist())
                 continue
             if kinds[0]:
                 highs.changeColsCost(kinds[0], block.cost_columns, block.cost[at])
@@ -159,7 +176,7 @@ class Sweeper:
         margin, held = self._margins(block, x)
         readings = self._read(block, x, y)
         bad = status != OPTIMAL
-        margin[bad], readings[bad] = np.nan, np.nan
+        margin[bad], held[bad], readings[bad] = np.nan, np.nan, np.nan
         return SolvedBlock(block.first, status, margin, held, readings, clashing)
 
     def _from_nothing(self, at: int, x: Floats, y: Floats, clashing: dict[int, tuple[int, ...]]) -> int:
@@ -230,14 +247,9 @@ class Sweeper:
 
     def _margins(self, block: Block, x: Floats) -> tuple[Floats, Floats]:
         """Margins of the plans, and of the base's plan at the prices of each case."""
-        lp, base_x = self.lp, self.program.base_x
-        margin = x @ lp.cost + lp.offset
-        held = np.full(block.count, float(lp.cost @ base_x) + lp.offset)
-        if len(block.cost_columns):
-            change = block.cost - lp.cost[block.cost_columns]
-            margin += (x[:, block.cost_columns] * change).sum(axis=1)
-            held += (change * base_x[block.cost_columns]).sum(axis=1)
-        return margin, held
+        cost = np.broadcast_to(self.lp.cost, x.shape).copy()
+        cost[:, block.cost_columns] = block.cost
+        return _totals(cost * x) + self.lp.offset, _totals(cost * self.program.base_x) + self.lp.offset
 
     def _read(self, block: Block, x: Floats, y: Floats) -> Floats:
         """Readings, a line a case."""
@@ -258,14 +270,17 @@ class Sweeper:
         return shares_of(activity, high)
 
 
-def read_values(readings: Readings, x: Floats, y: Floats, shares: Floats) -> Floats:
-    """The readings of some optima (a line each): sums, shares of maxima, worths.
+def _totals(terms: Floats) -> Floats:
+    """The sum of each line, worked out by itself: what stands beside it does not change its last digits."""
+    sums: Floats = np.add.reduceat(np.ascontiguousarray(terms), [0], axis=1)[:, 0]
+    return sums
 
-    Each line is worked out by itself, so that it does not depend on what stands beside it.
-    """
-    sums = np.array([readings.sums @ line for line in x]).reshape(len(x), len(readings.sums))
+
+def read_values(readings: Readings, x: Floats, y: Floats, shares: Floats) -> Floats:
+    """The readings of some optima (a line each): sums, shares of maxima, worths."""
     worths = np.abs(y[:, readings.worth_rows]) * readings.worth_scales
-    return np.hstack((sums, shares, worths))
+    values: Floats = np.hstack((readings.sums.sums(x), shares, worths)) + 0.0  # never minus zero
+    return values
 
 
 def shares_of(activity: Floats, high: Floats) -> Floats:
