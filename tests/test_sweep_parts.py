@@ -284,7 +284,7 @@ def test_a_damaged_part_is_done_again(
     part = folder / part_name(BLOCK, whole[1])
     assert damage(part.read_bytes()) != part.read_bytes()
     part.write_bytes(damage(part.read_bytes()))
-    with pytest.raises(OutputError, match="is damaged: it is not what parts.sha256 lists"):
+    with pytest.raises(OutputError, match=r"is damaged: it is not what parts\.sha256 lists"):
         read_sweep(folder)
     found, solved = counted_blocks(job, folder, whole[1], monkeypatch)
     assert same_bits(found, undisturbed) and solved == [BLOCK]
@@ -438,7 +438,8 @@ from test_sweep_parts import MEASURES, some
 from olefinlp.answers.sweep import prepare
 from olefinlp.outputs.sweep_parts import run_into
 plan = _plan("brackwater_2031_03.yaml")
-run_into(prepare(some(plan, 2000), MEASURES, plan), Path({folder!r}), form={form!r}, workers=2, told=lambda *_: time.sleep({pause}))
+job = prepare(some(plan, 2000), MEASURES, plan)
+run_into(job, Path({folder!r}), form={form!r}, workers=2, told=lambda *_: time.sleep({pause}))
 """
 
 
