@@ -29,7 +29,7 @@ from olefinlp.inputs.scenario import Scenario
 from olefinlp.inputs.units import per_lb
 from olefinlp.lp.algebra import build_model
 from olefinlp.lp.certificate import Certificate, prove
-from olefinlp.lp.compile import LabelledLp, PriceMap, compile_model, compile_prices
+from olefinlp.lp.compile import LabelledLp, PriceMap, compile_prices, program_of
 from olefinlp.lp.neighbours import Neighbours
 from olefinlp.lp.solver import Outcome, Solution, Solver, Status
 
@@ -223,7 +223,7 @@ def make_plan(scenario: Scenario) -> Plan:
     3684.2
     """
     case = scenario.case
-    lp = compile_model(build_model(case))
+    lp = program_of(case)
     solver = Solver(lp)
     outcome = solver.solve()
     if outcome.solution is None:

@@ -21,8 +21,7 @@ from olefinlp.inputs.prices import AMOUNT, NUMBER, Price, typed_of
 from olefinlp.inputs.scenario import Scenario
 from olefinlp.inputs.sweep_cases import SweepCases
 from olefinlp.inputs.varied import PRICE, scenario_at
-from olefinlp.lp.algebra import build_model
-from olefinlp.lp.compile import Floats, Integers, LabelledLp, compile_model
+from olefinlp.lp.compile import Floats, Integers, LabelledLp, program_of
 from olefinlp.lp.sweep import CHOOSE, DUAL, PRIMAL, Block, same_shape
 
 if TYPE_CHECKING:
@@ -55,7 +54,7 @@ class OwnPrograms(Exception):
 
 def lp_of(scenario: Scenario) -> LabelledLp:
     """The program of a scenario."""
-    return compile_model(build_model(scenario.case))
+    return program_of(scenario.case)
 
 
 @dataclass(frozen=True)
