@@ -36,7 +36,7 @@ def mixed(plan: Plan, count: int) -> SweepCases:
         "feeds.full_range_naphtha.spot_cargo": draw(480, 600, count),
         "utilities.natural_gas": draw(3, 8, count),
         "feeds.ethane.contract.max": draw(20, 40, count),
-        "outlets.polymer_grade_propylene.min": np.round(draw(5, 33, count)),
+        "outlets.polymer_grade_propylene.min": np.random.default_rng(13).choice([5, 20, 31, 33], count, p=[0.5, 0.4, 0.07, 0.03]),
         "yields.thermal.full_range_naphtha.high.ethylene": draw(27, 30, count),
         "recovery_units.c3_splitter.factor": np.where(draw(0, 1, count) < 0.2, NAN, draw(0.8, 1, count)),
     }
@@ -55,7 +55,9 @@ def some(plan: Plan, count: int, **more: Any) -> SweepCases:
     values = {
         "feeds.full_range_naphtha.spot_cargo": list(draw(480, 600, count)),
         "feeds.ethane.contract.max": [NAN if n % 3 else 20 + n / 30 for n in range(count)],
-        "outlets.polymer_grade_propylene.min": [10.0 + n % 24 for n in range(count)],
+        "outlets.polymer_grade_propylene.min": [
+            33.0 if n % 60 == 7 else 31.0 if n % 20 == 1 else 10.0 + n % 2 for n in range(count)
+        ],
     }
     return cases_of(plan.scenario, values, **more)
 

@@ -147,7 +147,10 @@ SWEEPS: dict[str, tuple[str, Callable[[Scenario, int], SweepCases], int, int, bo
 }
 
 
-@pytest.mark.parametrize("name", SWEEPS)
+SLOW = ("limits", "factor times capacity", "a run length, which is no straight line", "six months")
+
+
+@pytest.mark.parametrize("name", [pytest.param(name, marks=[pytest.mark.slow] * (name in SLOW)) for name in SWEEPS])
 def test_each_case_is_the_plan_that_its_scenario_gives(shipped_scenario: Read, name: str) -> None:
     """Margins always; quantities and worths where no other plan, and no other duals, are as good."""
     file, made, count, checked, shared = SWEEPS[name]

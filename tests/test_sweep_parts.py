@@ -42,7 +42,7 @@ def undisturbed(job: Job) -> Sweep:
     return gathered(job, run_sweep(job, workers=1))
 
 
-@pytest.fixture(scope="module", params=FORMS)
+@pytest.fixture(scope="module", params=[CSV, pytest.param(PARQUET, marks=pytest.mark.slow)])
 def whole(request: pytest.FixtureRequest, job: Job, tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, str]:
     """A finished folder: to be copied, not to be changed."""
     folder = tmp_path_factory.mktemp("whole") / "swept"

@@ -74,6 +74,7 @@ def test_a_number_acts_along_a_line_or_value_by_value(march: Plan, path: str, va
     is_the_program_of_each_case(made)
 
 
+@pytest.mark.slow
 def test_changes_in_per_cent_are_of_what_stands_in_each_month(shipped_plan: Callable[[str], Plan]) -> None:
     six = shipped_plan("brackwater_2031_03_to_08.yaml")
     limit, price = "outlets.crude_c4_contract.max", "feeds.full_range_naphtha.spot_cargo"
@@ -84,6 +85,7 @@ def test_changes_in_per_cent_are_of_what_stands_in_each_month(shipped_plan: Call
     is_the_program_of_each_case(made)
 
 
+@pytest.mark.slow
 def test_one_value_for_months_that_differ_is_tabulated(shipped_plan: Callable[[str], Plan]) -> None:
     """Today is not on the line: 17.5 kt in most months, 11 kt in August."""
     made = terms(shipped_plan("brackwater_2031_03_to_08.yaml"), {"outlets.crude_c4_contract.max": [12, 14, 16]})
@@ -112,7 +114,7 @@ def test_more_values_than_are_tabulated_get_programs_of_their_own(march: Plan, m
         terms(march, {path: [500, 600, 700, 800]})
     found = solved(cases_of(march.scenario, {path: [500, 600, 700, 800]}))
     assert not found.shared and found.note.startswith("every case is solved on a program of its own: ")
-    agrees_with_plans(found, [0, 3])
+    agrees_with_plans(found, [0, 3], most=0)
 
 
 def test_a_moved_number_put_in_place() -> None:
@@ -130,14 +132,17 @@ def test_a_moved_number_put_in_place() -> None:
 
 
 def test_a_minimum_that_meets_its_maximum_is_not_above_it(march: Plan) -> None:
-    """30 + slope × steps may end in …0000001: the case is as possible as its scenario."""
-    values = np.linspace(44, 58, 57)
+    """44 + slope × steps may end in …0000001: the case is as possible as its scenario."""
+    above, high = np.nextafter(58.0, 60.0), np.array([58.0, 58.0, INF, 58.0, -INF])
+    put = sweep_terms._not_above(np.array([above, 58.001, -INF, 57.0, -INF]), high)
+    assert put.tolist() == [58.0, 58.001, -INF, 57.0, -INF]
+    values = np.linspace(45.5, 58, 9)
     found = solved(cases_of(march.scenario, {LEAST_SOLD: values}))
     assert (found.status != NO_CASE).all() and found.status[-1] == OPTIMAL
     both = solved(cases_of(march.scenario, {LEAST_SOLD: values - 0.1, MOST_SOLD: values - 0.1}))
     assert set(both.status[both.status != OPTIMAL]) <= {IMPOSSIBLE}
-    agrees_with_plans(both, np.flatnonzero(both.status == OPTIMAL)[::15])
-    assert (both.status == OPTIMAL).sum() > 40
+    agrees_with_plans(both, np.flatnonzero(both.status == OPTIMAL)[::3])
+    assert (both.status == OPTIMAL).sum() > 6
 
 
 def test_a_minimum_above_its_maximum_in_one_case_is_named(march: Plan) -> None:
@@ -199,7 +204,7 @@ def test_numbers_that_act_on_each_other_are_found(march: Plan) -> None:
         terms(march, {FACTOR: [0.9, 1.1], CAPACITY: [200, 240]})
 
 
-@pytest.mark.parametrize("pair", [57, 0, 299])
+@pytest.mark.parametrize("pair", [57, *(pytest.param(pair, marks=pytest.mark.slow) for pair in (0, 299))])
 def test_a_pair_that_acts_together_in_one_case_alone_is_found(march: Plan, pair: int) -> None:
     """Of 300 cases one changes both; all others one of them: with chance alone it would be passed over."""
     factor, capacity = np.full(300, NAN), np.full(300, NAN)

@@ -264,7 +264,10 @@ EDITS: dict[str, tuple[str, str, float, Callable[[Path, str], None], str]] = {
 }
 
 
-@pytest.mark.parametrize("what", EDITS)
+QUICK = list(EDITS)[::3]
+
+
+@pytest.mark.parametrize("what", [pytest.param(what, marks=[pytest.mark.slow] * (what not in QUICK)) for what in EDITS])
 def test_a_number_varies_what_an_edit_of_the_files_would(shipped_scenario: Read, folder: Path, what: str) -> None:
     file, name, value, edit, written = EDITS[what]
     scenario = shipped_scenario(file)
