@@ -290,16 +290,16 @@ def test_each_ending_has_its_exit_code() -> None:
     }
 
 
-def unlimited(model: Any) -> LabelledLp:
+def unlimited(case: Any) -> LabelledLp:
     """The LP of a model as if nobody had written a limit; the input checks would have stopped such files."""
-    lp = compile_model(model)
+    lp = compile_model(build_model(case))
     limits = np.array([label[0].endswith("_limit") for label in lp.rows])
     return replace(lp, row_low=np.where(limits, -np.inf, lp.row_low), row_high=np.where(limits, np.inf, lp.row_high))
 
 
 def test_a_margin_without_end_is_exit_code_4(work: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """What grows without end is named with its place."""
-    monkeypatch.setattr("olefinlp.answers.plan.compile_model", unlimited)
+    monkeypatch.setattr("olefinlp.answers.plan.program_of", unlimited)
     done = run("plan", TEXTBOOK, "--json", "-")
     assert done.code == 4
     assert "The margin has no end" in done.err
@@ -311,7 +311,7 @@ def test_a_margin_without_end_is_exit_code_4(work: Path, monkeypatch: pytest.Mon
 
 def test_a_margin_without_end_is_no_plan_in_python(monkeypatch: pytest.MonkeyPatch) -> None:
     """The same from a script: an exception that carries the status."""
-    monkeypatch.setattr("olefinlp.answers.plan.compile_model", unlimited)
+    monkeypatch.setattr("olefinlp.answers.plan.program_of", unlimited)
     with pytest.raises(NoPlan) as caught:
         olefinlp.make_plan(olefinlp.read_scenario(ROOT / TEXTBOOK))
     assert caught.value.status is Status.UNBOUNDED
