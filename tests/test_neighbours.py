@@ -4,12 +4,15 @@ from __future__ import annotations
 
 import math
 import random
+import subprocess
+import sys
 from collections.abc import Callable, Iterator
 from dataclasses import replace
 from typing import Any
 
 import numpy as np
 import pytest
+from conftest import ROOT
 from plants import dense_lp
 
 from olefinlp.answers.break_even import break_even_prices
@@ -325,3 +328,38 @@ def test_the_default_answers_of_a_month_take_few_solves(march: Plan) -> None:
     plan = make_plan(march.scenario)
     default_answers(plan)
     assert 200 < plan.neighbours.solves < 400
+
+
+PRINTING = """
+import dataclasses, sys, threading
+import numpy as np
+from olefinlp import read_scenario
+from olefinlp.lp.compile import program_of
+from olefinlp.lp.solver import Solver, Status
+
+lp = program_of(read_scenario({scenario!r}).case)
+never = dataclasses.replace(lp, low=np.where(np.arange(len(lp.columns)) == 0, 1e6, lp.low))
+never = dataclasses.replace(never, high=np.where(np.arange(len(lp.columns)) == 0, 1e6, lp.high))
+done = threading.Event()
+
+def solve():
+    while not done.is_set():
+        assert Solver(never).solve().status is Status.INFEASIBLE
+
+workers = [threading.Thread(target=solve) for _ in range(2)]
+for worker in workers:
+    worker.start()
+for number in range(2000):
+    print(number, flush=True)
+done.set()
+for worker in workers:
+    worker.join()
+"""
+
+
+def test_what_others_print_while_programs_are_solved_arrives_and_nothing_else() -> None:
+    """No line of another thread is lost with the solver's banner, and the banner is not among them."""
+    code = PRINTING.format(scenario=str(ROOT / "scenarios" / "thermal_cracker.yaml"))
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False, cwd=ROOT, timeout=120)
+    assert done.returncode == 0, done.stderr
+    assert done.stdout.splitlines() == [str(number) for number in range(2000)]

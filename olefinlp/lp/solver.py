@@ -6,12 +6,11 @@ maximum, ≤ 0 on a binding minimum; a column's dual is its reduced cost, ≤ 0 
 
 from __future__ import annotations
 
-import contextlib
+import functools
 import math
 import os
 import sys
 import threading
-from collections.abc import Iterator
 from dataclasses import dataclass
 from enum import Enum
 from typing import Any
@@ -79,37 +78,36 @@ def solver_version() -> str:
     return f"HiGHS {highspy.Highs.version(_quiet_highs())}" if hasattr(highspy.Highs, "version") else "HiGHS"
 
 
-_ASIDE = threading.RLock()
+_FIRST = threading.Lock()
 
 
-@contextlib.contextmanager
-def _no_banner() -> Iterator[None]:
-    """The first solver of a process prints a banner whatever the options; standard output is ours.
+@functools.cache
+def _print_banner() -> None:
+    """The first solver of a process prints a banner whatever the options, and standard output is ours: it is made here.
 
-    One thread at a time: two that put it aside and back in turns would lose it.
+    Nothing that is printed later is put aside, by whichever thread.
     """
-    with _ASIDE:
-        sys.stdout.flush()
-        try:
-            kept = os.dup(1)
-        except OSError:  # no standard output at all
-            yield
-            return
-        try:
-            with open(os.devnull, "w") as nowhere:
-                os.dup2(nowhere.fileno(), 1)
-                yield
-        finally:
-            os.dup2(kept, 1)
-            os.close(kept)
+    sys.stdout.flush()
+    try:
+        kept = os.dup(1)
+    except OSError:  # no standard output at all
+        return
+    try:
+        with open(os.devnull, "w") as nowhere:
+            os.dup2(nowhere.fileno(), 1)
+            highspy.Highs()
+    finally:
+        os.dup2(kept, 1)
+        os.close(kept)
 
 
 def _quiet_highs() -> Any:
-    with _no_banner():
-        highs = highspy.Highs()
-        for name, value in OPTIONS.items():
-            if highs.setOptionValue(name, value) != highspy.HighsStatus.kOk:
-                raise RuntimeError(f"HiGHS does not know the option {name}={value}")
+    with _FIRST:
+        _print_banner()
+    highs = highspy.Highs()
+    for name, value in OPTIONS.items():
+        if highs.setOptionValue(name, value) != highspy.HighsStatus.kOk:
+            raise RuntimeError(f"HiGHS does not know the option {name}={value}")
     return highs
 
 
@@ -124,8 +122,7 @@ class Solver:
         self.lp = lp
         self.scale = _scale(lp) if scaled else 1.0
         self.highs = _quiet_highs()
-        with _no_banner():
-            self._pass_model()
+        self._pass_model()
 
     def _pass_model(self) -> None:
         lp, model = self.lp, highspy.HighsLp()
@@ -151,8 +148,7 @@ class Solver:
         return outcome if again.status is Status.FAILED else again
 
     def _run(self) -> Outcome:
-        with _no_banner():
-            run = self.highs.run()
+        run = self.highs.run()
         status = self.highs.getModelStatus()
         text = self.highs.modelStatusToString(status)
         known = _STATUSES.get(status, Status.FAILED)

@@ -131,7 +131,6 @@ class Sweeper:
         self.terms = terms_of(program.lp)
         self.solver = Solver(program.lp)
         self.scale = self.solver.scale
-        self.solver.solve()  # the first run of a process may print a banner, which the solver's wrapper keeps quiet
         self.solver.highs.setOptionValue("simplex_strategy", program.strategy)
         self.basis = highspy.HighsBasis()
         self.basis.col_status = [highspy.HighsBasisStatus(int(status)) for status in program.column_status]
