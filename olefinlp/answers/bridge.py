@@ -22,7 +22,7 @@ from olefinlp.answers.money import SHORTFALL, MoneyLine, money_lines
 from olefinlp.answers.quantities import Quantities
 from olefinlp.answers.room import decisions
 from olefinlp.answers.tables import Column, Record, Table
-from olefinlp.inputs.case import PER_THOUSAND, Case
+from olefinlp.inputs.case import Case
 from olefinlp.lp.compile import Floats, Label
 from olefinlp.lp.neighbours import NeighbourError, Optimum
 
@@ -305,7 +305,7 @@ def _cost(plan: Plan, prices: dict[Key, float]) -> Floats:
     case, cost = plan.quantities.case, plan.lp.cost.copy()
     for key, (columns, coefficients) in plan.price_map.items():
         price = case.prices[key]
-        change = (prices[key] - price.value) * (PER_THOUSAND if price.unit_used == case.currency else 1.0)
+        change = (prices[key] - price.value) * case.per_unit(*key)
         if change:
             np.add.at(cost, columns, change * coefficients)
     return cost

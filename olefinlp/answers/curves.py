@@ -160,8 +160,7 @@ def cost_direction(case: Case, prices: PriceMap, item: str, months: tuple[str, .
     for key, times in price_derivatives(case, item, months).items():
         if key in prices:
             columns, coefficients = prices[key]
-            per_unit = 1e-3 if case.prices[key].unit_used == case.currency else 1.0
-            np.add.at(direction, columns, times * per_unit * coefficients)
+            np.add.at(direction, columns, times * case.per_unit(*key) * coefficients)
     return direction
 
 
@@ -177,7 +176,7 @@ def _price_axis(plan: Plan, item: str, months: tuple[str, ...]) -> Axis:
 
     factor, unit = (1.0, price.unit_used) if price.of else (price.factor, price.unit)
     quantity = QUANTITIES.get(price.unit_used.partition("/")[2], "pieces")
-    scale = 1000.0 if price.unit_used == case.currency else 1.0
+    scale = 1 / case.per_unit(item, months[0])
     low, high = _between_steps(case, item, months)
     note = "All months move by the same amount. " if len(months) > 1 else ""
     if any(data.take_or_pay and f"{data.kind}.{source}" == item for source, data in case.sources.items()):

@@ -69,7 +69,7 @@ def _range(plan: Plan, price: Price) -> PriceRange:
         reach = abs(typed) or _usual(plan, price) / (abs(factor) or 1.0)
         low, high, looked = _ends(plan, direction, typed, reach)
     own = plan.price_map.get((price.item, price.month))
-    scale = 1e-3 if price.unit_used == case.currency else 1.0
+    scale = case.per_unit(price.item, price.month)
     quantity = 0.0 if own is None else scale * float(own[1] @ plan.solution.x[own[0]])
     if abs(quantity) < 1e-9 * plan.quantities.size:
         quantity = 0.0

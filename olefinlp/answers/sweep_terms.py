@@ -243,7 +243,7 @@ class SweepTerms:
         columns = np.unique(np.concatenate([c for c, _ in maps.values()] or [np.zeros(0, dtype=np.int32)])).astype(np.int32)
         cost = np.broadcast_to(self.lp.cost[columns], (len(values), len(columns))).copy()
         for key, (at, coefficients) in maps.items():
-            scale = 1e-3 if self.case.prices[key].unit_used == self.case.currency else 1.0
+            scale = self.case.per_unit(*key)
             change = scale * (prices[key] - self.case.prices[key].value)
             cost[:, np.searchsorted(columns, at)] += change[:, None] * coefficients
         return columns, cost

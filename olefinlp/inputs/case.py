@@ -265,7 +265,11 @@ class Case:
     def rate(self, item: str, month: str) -> float:
         """Effective price in thousands of the currency per unit of the plan (per piece for a piece)."""
         price = self.prices[item, month]
-        return price.value * (PER_THOUSAND if price.unit_used == self.currency else 1.0)
+        return price.value * self.per_unit(item, month)
+
+    def per_unit(self, item: str, month: str) -> float:
+        """Thousands of the currency in one of the price's own unit: a thousandth where it is per piece, else one."""
+        return PER_THOUSAND if self.prices[item, month].unit_used == self.currency else 1.0
 
     def purchase_item(self, source: str, tier: int) -> str:
         """The price item of one step of a source."""
