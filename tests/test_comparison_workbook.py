@@ -105,6 +105,25 @@ def test_only_plain_functions_and_nothing_hidden(content: bytes) -> None:
     assert len(charts) == 4
 
 
+@needs_office
+@pytest.mark.slow
+def test_bridges_start_from_the_first_case_that_has_a_plan(recalculate: Recalculate, tmp_path: Path) -> None:
+    found = listed(
+        tmp_path,
+        MARRAM,
+        "{name: too much, weight: 1, changes: {outlets.propylene_sale.min: 31.9 kt}}",
+        "{name: as planned, weight: 1}",
+        "{name: dear, weight: 1, prices: {indexes.naphtha: 590 USD/t}}",
+    )
+    file = write_comparison(found, tmp_path / "first.xlsx")
+    sheet = book_of(recalculate(file)[0], values=True)[WHY]
+    labels = {sheet.cell(row, column).value for row in range(1, sheet.max_row + 1) for column in range(1, 6)}
+    assert "margin of as planned" in labels and "margin of too much" not in labels
+    row = next(cells for cells in sheet.iter_rows() if "feed prices" in [cell.value for cell in cells])
+    numbers = [cell.value for cell in row if isinstance(cell.value, int | float)]
+    assert numbers == pytest.approx([found.bridges["dear"].price_effect], rel=1e-9)
+
+
 def test_differences_and_money_are_formulas(content: bytes, comparison: Comparison) -> None:
     book = book_of(content)
     for name in ("Feeds", "Products", "Loads", "Prices used"):

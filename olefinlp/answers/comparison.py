@@ -13,6 +13,7 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from olefinlp.answers.balances import BalanceError
+from olefinlp.answers.bridge import Bridge, bridge_of
 from olefinlp.answers.plan import NoPlan, Plan, make_plan, plan_of
 from olefinlp.inputs.cases import CaseSet
 from olefinlp.inputs.findings import Finding
@@ -53,6 +54,19 @@ class Comparison:
     def plans(self) -> dict[str, Plan]:
         """The plans there are, by case."""
         return {case.name: case.plan for case in self.cases if case.plan is not None}
+
+    @functools.cached_property
+    def first(self) -> str:
+        """The case that bridges start from: the first that has a plan."""
+        return next(iter(self.plans))
+
+    @functools.cached_property
+    def bridges(self) -> dict[str, Bridge]:
+        """The bridge from the first case that has a plan to every other, by case; solved when first asked for."""
+        from_first = self.plans[self.first]
+        return {
+            name: bridge_of(from_first, plan, names=(self.first, name)) for name, plan in self.plans.items() if name != self.first
+        }
 
     @property
     def names(self) -> tuple[str, ...]:

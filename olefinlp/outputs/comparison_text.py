@@ -6,7 +6,6 @@ import textwrap
 from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
-from olefinlp.answers.bridge import bridge_of
 from olefinlp.outputs.text import INDENT, aligned, names, number
 
 if TYPE_CHECKING:
@@ -78,14 +77,10 @@ def _margins(comparison: Comparison) -> list[str]:
 
 def _why(comparison: Comparison) -> Iterator[str]:
     """Price effect on the first plan, gain from re-optimising, limits, case by case."""
-    plans = comparison.plans
-    first = next(iter(plans))
     rows = [["case", "prices on that plan", "re-optimising", "other limits", "together"]]
-    for name, plan in plans.items():
-        if name != first:
-            found = bridge_of(plans[first], plan, names=(first, name))
-            numbers = (found.price_effect, found.gain, found.limits_effect, found.new - found.old)
-            rows.append([name, *(number(value) for value in numbers)])
+    for name, found in comparison.bridges.items():
+        numbers = (found.price_effect, found.gain, found.limits_effect, found.new - found.old)
+        rows.append([name, *(number(value) for value in numbers)])
     yield from aligned(rows)
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
-from olefinlp.answers.bridge import Bridge, bridge_of
+from olefinlp.answers.bridge import Bridge
 from olefinlp.outputs.workbook_book import Book, cell, put, put_formula
 from olefinlp.outputs.workbook_charts import FONT, GRID, finish
 from olefinlp.outputs.workbook_tables import LINE_HEIGHT, Grid, number_format
@@ -46,7 +46,7 @@ class _Why:
 
     @property
     def first(self) -> str:
-        return self.comparison.names[0]
+        return self.comparison.first
 
     @property
     def names(self) -> list[str]:
@@ -62,9 +62,7 @@ class _Why:
 
 def write_why(book: Book, sheet: Any, comparison: Comparison, prices: Grid, table: CaseTable) -> None:
     """The bridge from the first case to every other: account, waterfall of a chosen case, effect of every price."""
-    plans = comparison.plans
-    first = next(iter(plans))
-    bridges = {name: bridge_of(plans[first], plan, names=(first, name)) for name, plan in plans.items() if name != first}
+    first, bridges = comparison.first, comparison.bridges
     why = _Why(book, sheet, comparison, prices, bridges)
     line = f"From {first} to each case: its prices on the plan of {first}, then what re-optimising adds, then other limits."
     put(sheet, 0, 0, line, book.style("note"))
