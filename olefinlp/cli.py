@@ -25,6 +25,7 @@ from olefinlp.cli_support import (
     count,
     data,
     explanations,
+    misnamed_workbook,
     note,
     planned,
     print_findings,
@@ -39,8 +40,9 @@ from olefinlp.cli_support import (
 )
 
 if TYPE_CHECKING:
+    from collections.abc import Callable
+
     from olefinlp.answers.answer import Answer
-    from olefinlp.cli_support import Writer
 
 FEW_MONTHS = 3
 """From more months on, a person waiting is told for what."""
@@ -115,8 +117,8 @@ def plan(
     if scenario is None:
         note(f"no scenario given: planning the invented demo, {shown_path(path)}")
     sizes, share = answer_options(parcels, room, json_file)
-    if output and output.suffix.lower() != ".xlsx" and not output.is_dir():
-        refuse_option(json_file, f"--output {output}: a workbook's name ends in .xlsx")
+    if wrong := misnamed_workbook("--output", output):
+        refuse_option(json_file, wrong)
     made = planned(path, price_case, json_file)
     answers: tuple[Answer, ...] = ()
     if not quick:
@@ -125,12 +127,14 @@ def plan(
         if len(made.quantities.case.months) > FEW_MONTHS:
             note("solving around the plan for its answers, a few seconds a month; --quick leaves them out")
         answers = default_answers(made, sizes, share, every=all_answers)
-    targets: list[tuple[Path, Writer]] = [(output or Path(f"{path.stem}_plan.xlsx"), write_workbook)]
+    jobs: list[tuple[Path, Callable[[Path], object]]] = [
+        (output or Path(f"{path.stem}_plan.xlsx"), lambda target: write_workbook(made, target, answers))
+    ]
     if json_file and json_file != "-":
-        targets.append((Path(json_file), write_json))
+        jobs.append((Path(json_file), lambda target: write_json(made, target, answers)))
     if csv_folder:
-        targets.append((csv_folder, write_csv))
-    written, failed = write_all(made, answers, targets)
+        jobs.append((csv_folder, lambda target: write_csv(made, target, answers)))
+    written, failed = write_all(jobs)
     if json_file == "-":
         data(plan_json(made, answers))
     else:

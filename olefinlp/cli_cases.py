@@ -14,6 +14,8 @@ from olefinlp.cli_support import (
     NOT_PROVEN,
     count,
     data,
+    load_algebra,
+    need_workbook_name,
     note,
     planned,
     print_findings,
@@ -22,6 +24,7 @@ from olefinlp.cli_support import (
     shown_path,
     stop,
     stop_on_input,
+    write_all,
 )
 
 if TYPE_CHECKING:
@@ -76,8 +79,7 @@ def cases(
         _write_sheet(file, write)
         return
     target = output or Path(f"{file.stem}_comparison.xlsx")
-    if target.suffix.lower() != ".xlsx" and not target.is_dir():
-        stop(f"--output {target}: a workbook's name ends in .xlsx", EXIT_INPUT)
+    need_workbook_name("--output", target)
     if not 0 <= risk < 100 or not 0 < worst < 100:
         stop("--risk is from 0 to below 100 %, --worst above 0 and below 100 %: some weight stays on the mean", EXIT_INPUT)
     compared = _compared(file, scenario)
@@ -96,8 +98,7 @@ def _write_sheet(file: Path, target: Path) -> None:
 
     if file.suffix.lower() in (".xlsx", ".xlsm", ".csv"):
         stop(f"{shown_path(file)} is a list of cases already\nhint: --write makes a case sheet of a scenario (yaml)", EXIT_INPUT)
-    if target.suffix.lower() != ".xlsx" and not target.is_dir():
-        stop(f"--write {target}: a workbook's name ends in .xlsx", EXIT_INPUT)
+    need_workbook_name("--write", target)
     try:
         write_case_sheet(read_scenario(file), target)
     except InputError as error:
@@ -146,21 +147,13 @@ def _write_all(
     from olefinlp.outputs.comparison_records import comparison_json, write_comparison_csv, write_comparison_json
     from olefinlp.outputs.comparison_text import comparison_text
     from olefinlp.outputs.comparison_workbook import write_comparison
-    from olefinlp.outputs.files import OutputError
 
     jobs: list[tuple[Path, Callable[[Path], object]]] = [(target, lambda path: write_comparison(compared, path, answers))]
     if json_file and json_file != "-":
         jobs.append((Path(json_file), lambda path: write_comparison_json(compared, path, answers)))
     if csv_folder:
         jobs.append((csv_folder, lambda path: write_comparison_csv(compared, path, answers)))
-    written: list[str] = []
-    failed: list[str] = []
-    for path, job in jobs:
-        try:
-            job(path)
-            written.append(shown_path(path))
-        except OutputError as error:
-            failed.append(str(error))
+    written, failed = write_all(jobs)
     if json_file == "-":
         data(comparison_json(compared, answers))
     else:
@@ -180,8 +173,7 @@ def bridge(
     """Explain exactly why plan B earns more or less than plan A: prices, re-optimising, limits."""
     if order not in ORDERS:
         stop(f"--order {order}: known: {', '.join(ORDERS)}", EXIT_INPUT)
-    if output and output.suffix.lower() != ".xlsx" and not output.is_dir():
-        stop(f"--output {output}: a workbook's name ends in .xlsx", EXIT_INPUT)
+    need_workbook_name("--output", output)
     a, b, names = _two_plans(first, second, cases_file, scenario)
     from olefinlp.answers.bridge import bridge as bridge_between
     from olefinlp.lp.certificate import CertificateError
@@ -204,9 +196,7 @@ def _two_plans(
         for name in (first, second):
             if not Path(name).is_file():
                 _no_such_plan(name)
-        import olefinlp
-
-        _ = olefinlp.make_plan  # the algebra first: it loads faster before the units
+        load_algebra()
         return planned(Path(first), None, None), planned(Path(second), None, None), None
     compared = _compared(cases_file, scenario)
     found: list[Plan] = []

@@ -7,7 +7,7 @@ from typing import Annotated
 
 import typer
 
-from olefinlp.cli_support import EXIT_FAILED, EXIT_INPUT, NOT_PROVEN, planned, say_answer, stop
+from olefinlp.cli_support import EXIT_FAILED, EXIT_INPUT, NOT_PROVEN, load_algebra, need_workbook_name, planned, say_answer, stop
 
 
 def frontier(
@@ -34,13 +34,10 @@ def frontier(
     csv_file: Annotated[Path | None, typer.Option("--csv", metavar="FILE", help="Table as csv.")] = None,
 ) -> None:
     """Follow margin exactly against a second goal: emissions, a purchase, a sale, a cut, a unit's load."""
-    if output and output.suffix.lower() != ".xlsx" and not output.is_dir():
-        stop(f"--output {output}: a workbook's name ends in .xlsx", EXIT_INPUT)
+    need_workbook_name("--output", output)
     if limit is not None and (low is not None or high is not None):
         stop("--at-most asks for one point: leave --from and --to out", EXIT_INPUT)
-    import olefinlp
-
-    _ = olefinlp.make_plan  # the algebra first: it loads faster before the units
+    load_algebra()
     from olefinlp.answers.frontier import at_most, two_goal_curve
     from olefinlp.lp.certificate import CertificateError
 

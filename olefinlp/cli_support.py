@@ -15,23 +15,21 @@ if TYPE_CHECKING:
     from olefinlp.inputs.findings import Finding, InputError
     from olefinlp.inputs.scenario import Scenario
 
-    Writer = Callable[[Plan, Path, tuple[Answer, ...]], object]
-
 EXIT_OUTPUT, EXIT_INPUT, EXIT_FAILED = 1, 2, 6
 NOT_PROVEN = "hint: this is a fault of the tool or of extreme numbers, not a plan; please report it"
 
 
-def write_all(made: Plan, answers: tuple[Answer, ...], targets: list[tuple[Path, Writer]]) -> tuple[list[str], list[str]]:
-    """Write each output: what was written, and why the rest was not; one failure does not hold back the others.
+def write_all(jobs: list[tuple[Path, Callable[[Path], object]]]) -> tuple[list[str], list[str]]:
+    """Write each output, a path and what writes it: those written, and why the rest was not; no failure holds back others.
 
     It is done before anything is printed, so that a reader who closes a pipe early loses no file.
     """
     from olefinlp.outputs.files import OutputError
 
     written, failed = [], []
-    for target, write in targets:
+    for target, write in jobs:
         try:
-            write(made, target, answers)
+            write(target)
             written.append(shown_path(target))
         except OutputError as error:
             failed.append(str(error))
@@ -63,6 +61,25 @@ def say_answer(
         stop(str(error), EXIT_OUTPUT)
     if output or csv_file:
         note("\nwritten: " + ", ".join(shown_path(p) for p in (output, csv_file) if p))
+
+
+def misnamed_workbook(option: str, path: Path | None) -> str:
+    """What is wrong with the name of a workbook to write, else nothing; a folder has a message of its own."""
+    wrong = path is not None and path.suffix.lower() != ".xlsx" and not path.is_dir()
+    return f"{option} {path}: a workbook's name ends in .xlsx" if wrong else ""
+
+
+def need_workbook_name(option: str, path: Path | None) -> None:
+    """End the command, before anything is planned, when a workbook to write is named as something else."""
+    if wrong := misnamed_workbook(option, path):
+        stop(wrong, EXIT_INPUT)
+
+
+def load_algebra() -> None:
+    """Load the algebra before all else: it loads faster before the units."""
+    import olefinlp
+
+    _ = olefinlp.make_plan
 
 
 def answer_options(parcels: str | None, room: float, json_file: str | None) -> tuple[list[float] | None, float]:

@@ -10,7 +10,17 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from olefinlp.cli_support import EXIT_FAILED, EXIT_INPUT, EXIT_OUTPUT, NOT_PROVEN, note, shown_path, stop, stop_on_input
+from olefinlp.cli_support import (
+    EXIT_FAILED,
+    EXIT_INPUT,
+    EXIT_OUTPUT,
+    NOT_PROVEN,
+    load_algebra,
+    note,
+    shown_path,
+    stop,
+    stop_on_input,
+)
 
 if TYPE_CHECKING:
     from olefinlp.answers.sweep import Job, Sweep
@@ -52,14 +62,12 @@ def sweep(
 
 def _job(file: Path, vary: list[str] | None) -> Job:
     """What is to be swept; ends the command with everything that is wrong."""
-    import olefinlp
+    load_algebra()
     from olefinlp.answers.plan import NoPlan
-    from olefinlp.inputs.findings import InputError
-    from olefinlp.lp.solver import EXIT_CODES
-
-    _ = olefinlp.make_plan  # the algebra first: it loads faster before the units
     from olefinlp.answers.sweep import prepare
     from olefinlp.answers.sweep_readings import DEFAULT
+    from olefinlp.inputs.findings import InputError
+    from olefinlp.lp.solver import EXIT_CODES
 
     try:
         cases, measures = _cases(file, vary)
