@@ -27,7 +27,7 @@ from olefinlp.answers.comparison import CasePlanner, Comparison
 from olefinlp.answers.plan import Plan
 from olefinlp.inputs.scenario import Scenario
 from olefinlp.lp.algebra import build_model
-from olefinlp.lp.case_terms import case_terms, same_program, with_terms
+from olefinlp.lp.case_terms import SharedProgram, same_program, with_terms
 from olefinlp.lp.compile import compile_model
 
 MARCH = ROOT / "scenarios" / "brackwater_2031_03.yaml"
@@ -75,7 +75,7 @@ def test_every_case_is_the_plan_that_a_program_of_its_own_gives(comparison: Comp
 @pytest.mark.parametrize("change", BOUNDS, ids=str)
 def test_changed_bounds_are_those_of_a_program_built_anew(march: Plan, change: str) -> None:
     scenario = march.scenario.with_(BOUNDS[change], price_case="Low crude")
-    terms = case_terms(march.quantities.case, march.lp, march.price_map, scenario.case)
+    terms = SharedProgram(march.quantities.case, march.lp, march.price_map).terms(scenario.case)
     assert terms is not None
     shared, own = with_terms(march.lp, terms), compile_model(build_model(scenario.case))
     for name in ("row_low", "row_high", "low", "high", "starts", "index", "value"):
@@ -88,7 +88,7 @@ def test_stocks_at_the_start_are_bounds_too() -> None:
     base = make_plan(read_scenario(SIX_MONTHS))
     item = next(iter(base.scenario.file.stocks))
     scenario = base.scenario.with_({f"stocks.{item}.opening": "5 kt", f"stocks.{item}.end": {"at_least": "6 kt"}})
-    terms = case_terms(base.quantities.case, base.lp, base.price_map, scenario.case)
+    terms = SharedProgram(base.quantities.case, base.lp, base.price_map).terms(scenario.case)
     assert terms is not None
     shared, own = with_terms(base.lp, terms), compile_model(build_model(scenario.case))
     assert np.array_equal(shared.row_low, own.row_low)

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, TypeVar
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.break_even import break_even_prices
 from olefinlp.answers.buying import buying_plan
+from olefinlp.answers.held import HELD
 from olefinlp.answers.price_ranges import PriceRange, price_ranges
 from olefinlp.answers.regret import regret_table
 from olefinlp.lp.certificate import CertificateError
@@ -19,7 +20,6 @@ if TYPE_CHECKING:
     from olefinlp.answers.plan import Plan
 
 T = TypeVar("T")
-PURCHASES = ("purchases",)
 MOST_SOLVES = 6000
 """More than so many solves for one answer, about, are asked for before they are made."""
 SOLVES_A_PRICE = 7
@@ -39,7 +39,7 @@ class CaseAnswers:
 def case_answers(
     comparison: Comparison,
     *,
-    held: Sequence[str] = PURCHASES,
+    held: Sequence[str] = HELD,
     risk: float = 0.0,
     worst: float = 0.2,
     every: bool = False,

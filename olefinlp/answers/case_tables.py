@@ -96,6 +96,15 @@ def _group(plan: Plan, group: str) -> float:
     return sum(line.amount for line in plan.lines if line.group == group)
 
 
+def _by_key(cases: Iterable[tuple[str, Iterable[tuple[Key, float | None]]]]) -> dict[Key, dict[str, float | None]]:
+    """Numbers by case under their key, in the order in which cases bring them."""
+    rows: dict[Key, dict[str, float | None]] = {}
+    for case, lines in cases:
+        for key, value in lines:
+            rows.setdefault(key, {})[case] = value
+    return rows
+
+
 def _table(
     comparison: Comparison,
     name: str,
@@ -106,10 +115,7 @@ def _table(
     note: str = "",
 ) -> CaseTable:
     """Rows of all cases by their key (month, group, item, unit), in the order in which cases bring them."""
-    rows: dict[Key, dict[str, float | None]] = {}
-    for case, plan in comparison.plans.items():
-        for key, value in lines(plan):
-            rows.setdefault(key, {})[case] = value
+    rows = _by_key((case, lines(plan)) for case, plan in comparison.plans.items())
     months = list(comparison.scenario.case.months)
     ordered = sorted(rows, key=lambda key: months.index(key[0]) if key[0] in months else -1)
     made = tuple(CaseLine(*key, rows[key]) for key in ordered)
@@ -196,19 +202,15 @@ def limit_lines(comparison: Comparison) -> CaseTable:
 def break_even_lines(comparison: Comparison, answers: dict[str, Answer]) -> CaseTable:
     """The price at which each source would be dropped, or taken up, in each case."""
 
-    def lines(plan: Plan) -> Iterator[tuple[Key, float | None]]:
-        name = next(case for case, own in comparison.plans.items() if own is plan)
+    def lines(name: str) -> Iterator[tuple[Key, float | None]]:
+        unit = f"{comparison.plan(name).currency}/t"
         for row in answers[name].table.rows:
-            yield (row["month"], row["feed"], row["source"], f"{plan.currency}/t"), row["walk_away"]
+            yield (row["month"], row["feed"], row["source"], unit), row["walk_away"]
 
-    known = {name: plan for name, plan in comparison.plans.items() if name in answers}
     note = (
         "Price at which the volume would change: above today's for what is bought, below for what is not. Blank where none would"
     )
-    rows: dict[Key, dict[str, float | None]] = {}
-    for case, plan in known.items():
-        for key, value in lines(plan):
-            rows.setdefault(key, {})[case] = value
+    rows = _by_key((name, lines(name)) for name in comparison.plans if name in answers)
     made = tuple(CaseLine(*key, values) for key, values in rows.items())
     return CaseTable("case_break_evens", "Break-even prices", "Feed", "Source", "price", made, note)
 

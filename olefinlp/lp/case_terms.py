@@ -79,11 +79,6 @@ class SharedProgram:
         return summed
 
 
-def case_terms(base: Case, lp: LabelledLp, prices: PriceMap, other: Case) -> CaseTerms | None:
-    """The terms of one case on the program of another; None where it needs a program of its own."""
-    return SharedProgram(base, lp, prices).terms(other)
-
-
 def _step_columns(lp: LabelledLp, base: Case, other: Case) -> dict[int, tuple[float, float]]:
     """Ranges of the columns that are price steps, where their size differs."""
     columns: dict[int, tuple[float, float]] = {}

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -70,10 +70,10 @@ def write_comparison_page(
     _head(page)
     margin = _margins(page, money, amounts)
     _check(page, margin)
-    feeds = _sums(page, "Feeds bought", grids["Feeds"], "group", [data.feed for data in _sources(comparison)], {})
+    feeds = _sums(page, "Feeds bought", grids["Feeds"], "group", [data.feed for data in _sources(comparison)], {}, _bought)
     outlets = dict(_outlets(comparison))
     breaks = [page.row]
-    products = _sums(page, "Products sold", grids["Products"], "item", list(outlets), outlets)
+    products = _sums(page, "Products sold", grids["Products"], "item", list(outlets), outlets, _sold)
     tonnes = [row for row, unit in zip(range(products[0], products[1] + 1), outlets.values(), strict=True) if unit == "kt"]
     _failed(page)
     if page.row - breaks[0] + 2 * CHART_ROWS > PAGE_ROWS:
@@ -90,7 +90,7 @@ def _sources(comparison: Comparison) -> list[SourceData]:
 def _outlets(comparison: Comparison) -> list[tuple[str, str]]:
     """Outlets that some case sells through, with their unit, those in kt first."""
     case = comparison.scenario.case
-    sold = [o for o in case.sale_tiers if any(_total(plan, "Products", o) for plan in comparison.plans.values())]
+    sold = [o for o in case.sale_tiers if any(_sold(plan, o) for plan in comparison.plans.values())]
     found = [(o, "TJ LHV" if case.outlets[o][0] in case.heat_cuts else "kt") for o in sold]
     return sorted(found, key=lambda pair: pair[1] != "kt")
 
@@ -207,24 +207,34 @@ def _check(page: _Page, margin: int) -> None:
     page.row += 1
 
 
-def _sums(page: _Page, title: str, grid: Grid, key: str, items: Sequence[str], units: dict[str, str]) -> tuple[int, int]:
-    """Sums over the rows of another sheet that carry an item; gives the first and the last row."""
+def _sums(
+    page: _Page,
+    title: str,
+    grid: Grid,
+    key: str,
+    items: Sequence[str],
+    units: dict[str, str],
+    total: Callable[[Plan, str], float],
+) -> tuple[int, int]:
+    """Sums over the rows of another sheet that carry an item, `total` in a plan; gives the first and the last row."""
     _block(page, title)
     start = page.row
     plans = page.comparison.plans
-    lines = "Feeds" if key == "group" else "Products"
     for item in dict.fromkeys(items):
         formulas = {name: f"=SUMPRODUCT(({grid.span(key)}=$A{page.row + 1})*{grid.span(name)})" for name in page.plans}
-        values: dict[str, float | None] = {name: _total(plans[name], lines, item) for name in page.plans}
+        values: dict[str, float | None] = {name: total(plans[name], item) for name in page.plans}
         _row(page, item, units.get(item, "kt"), formulas, values, "quantity")
     return start, page.row - 1
 
 
-def _total(plan: Plan, lines: str, item: str) -> float:
+def _sold(plan: Plan, outlet: str) -> float:
     q = plan.quantities
-    if lines == "Products":
-        return sum(q.outlet(item, month) for month in q.case.months)
-    sources = [name for name, data in q.case.sources.items() if data.feed == item]
+    return sum(q.outlet(outlet, month) for month in q.case.months)
+
+
+def _bought(plan: Plan, feed: str) -> float:
+    q = plan.quantities
+    sources = [name for name, data in q.case.sources.items() if data.feed == feed]
     return sum(q.bought(source, month) for source in sources for month in q.case.months)
 
 
