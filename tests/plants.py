@@ -51,6 +51,29 @@ ONE_FEED = {
     "prices": {"ethylene": 1200, "residue": 200},
 }
 
+DEAR_AND_CHEAP = {
+    "yields": "feed, severity, ethylene, rest\ndear, base, 50, 50\ncheap, base, 30, 70",
+    "modes": "group, feed, severity, charge\nfurnaces, dear, base, 20\nfurnaces, cheap, base, 25",
+    "recovery_units": "unit, capacity, capacity_unit, measure, min_load\nsplitter, 9, t/h, ethylene, 0",
+    "unit_loads": "unit, of, item, load, load_unit\nsplitter, cut, ethylene, 1, t/t",
+    "prices": {"ethylene": 1000, "rest": 300},
+}
+"""Two feeds against 1000 furnace hours and 9 kt through a splitter (`test_hand_solved`); a scenario brings the offers."""
+
+THREE_STEPS = {
+    "yields": "feed, severity, ethylene, water\nethane, base, 50, 50",
+    "modes": "group, feed, severity, charge\nfurnaces, ethane, base, 10",
+    "prices": {"ethylene": 1000},
+    "scenario": """
+        feeds:
+          ethane:
+            pipeline:
+              tiers: [{up_to: 4 kt, price: 300 USD/t}, {up_to: 6 kt, price: 440 USD/t}, {up_to: 10 kt, price: 520 USD/t}]
+        outlets: {water_sale: {max: unlimited, price: 0 USD/t}}
+    """,
+}
+"""A feed worth 500 USD/t, offered in three price steps."""
+
 
 def rows_of(table: Table) -> list[dict[str, Any]]:
     """Rows from comma-separated text with a header."""

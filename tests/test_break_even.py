@@ -13,7 +13,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from plants import ONE_FEED, bought, planned
+from plants import DEAR_AND_CHEAP, ONE_FEED, bought, planned
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.break_even import break_even_prices
@@ -244,11 +244,7 @@ def test_two_feeds_by_hand(tmp_path: Path) -> None:
     (4380 + 4140)/20 = 426."""
     plan = planned(
         tmp_path,
-        yields="feed, severity, ethylene, rest\ndear, base, 50, 50\ncheap, base, 30, 70",
-        modes="group, feed, severity, charge\nfurnaces, dear, base, 20\nfurnaces, cheap, base, 25",
-        recovery_units="unit, capacity, capacity_unit, measure, min_load\nsplitter, 9, t/h, ethylene, 0",
-        unit_loads="unit, of, item, load, load_unit\nsplitter, cut, ethylene, 1, t/t",
-        prices={"ethylene": 1000, "rest": 300},
+        **DEAR_AND_CHEAP,
         scenario="""
             feeds:
               dear: {spot: {max: unlimited, price: 530 USD/t}}

@@ -15,7 +15,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.typing import NDArray
-from plants import ONE_FEED, dense_lp, dumped, near, write
+from plants import ONE_FEED, THREE_STEPS, dense_lp, dumped, near, write
 from scipy.optimize import linprog
 from scipy.sparse import block_diag, csr_matrix, hstack, vstack
 
@@ -257,25 +257,11 @@ def test_nothing_that_all_cases_allow(tmp_path: Path) -> None:
     ]
 
 
-STEPS = {
-    "yields": "feed, severity, ethylene, water\nethane, base, 50, 50",
-    "modes": "group, feed, severity, charge\nfurnaces, ethane, base, 10",
-    "prices": {"ethylene": 1000},
-    "scenario": """
-        feeds:
-          ethane:
-            pipeline:
-              tiers: [{up_to: 4 kt, price: 300 USD/t}, {up_to: 6 kt, price: 440 USD/t}, {up_to: 10 kt, price: 520 USD/t}]
-        outlets: {water_sale: {max: unlimited, price: 0 USD/t}}
-    """,
-}
-
-
 def test_a_source_is_decided_as_a_whole_whatever_its_steps(tmp_path: Path) -> None:
     """A tonne of ethane is worth 500. Steps as written end at 4 and 6 kt, in the other case at 1 and 3 kt. Up to 6 kt the next
     tonne earns 60 in the first and loses 20 in the second: 6 kt, 920 or 260, 590 on average. Known: 920 or 320, 620."""
     short = {"feeds.ethane.pipeline.tiers.1.up_to": "1 kt", "feeds.ethane.pipeline.tiers.2.up_to": "3 kt"}
-    answer = buying_plan(small_cases(tmp_path, [{"name": "Long"}, {"name": "Short", "changes": short}], **STEPS))
+    answer = buying_plan(small_cases(tmp_path, [{"name": "Long"}, {"name": "Short", "changes": short}], **THREE_STEPS))
     assert bought(answer, "ethane pipeline", NEUTRAL) == near(6)
     row = margins(answer)[NEUTRAL]
     assert (row[if_comes("Long")], row[if_comes("Short")]) == (near(920), near(260))

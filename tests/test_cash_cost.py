@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from plants import ONE_FEED, near, planned
+from plants import DEAR_AND_CHEAP, ONE_FEED, near, planned
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.cash_cost import cash_cost
@@ -50,11 +50,7 @@ def test_two_feeds_against_hours_and_a_splitter(tmp_path: Path) -> None:
     answer = cash_cost(
         planned(
             tmp_path,
-            yields="feed, severity, ethylene, rest\ndear, base, 50, 50\ncheap, base, 30, 70",
-            modes="group, feed, severity, charge\nfurnaces, dear, base, 20\nfurnaces, cheap, base, 25",
-            recovery_units="unit, capacity, capacity_unit, measure, min_load\nsplitter, 9, t/h, ethylene, 0",
-            unit_loads="unit, of, item, load, load_unit\nsplitter, cut, ethylene, 1, t/t",
-            prices={"ethylene": 1000, "rest": 300},
+            **DEAR_AND_CHEAP,
             scenario="""
                 feeds:
                   dear: {spot: {max: unlimited, price: 530 USD/t}}

@@ -6,10 +6,9 @@ import io
 import re
 import zipfile
 from pathlib import Path
-from typing import Any
 
-import openpyxl
 import pytest
+from books import book_of, formulas, row_of
 from conftest import ROOT, Recalculate, needs_office
 
 from olefinlp import compare_cases, read_cases
@@ -66,19 +65,6 @@ def mixed(tmp_path_factory: pytest.TempPathFactory) -> Comparison:
         "{name: less ethane, weight: 1, changes: {feeds.ethane.pipeline.tiers.2.up_to: 11 kt}, prices: "
         "{feeds.light_naphtha.contract: 500 EUR/t}}",
     )
-
-
-def book_of(content: bytes | Path, values: bool = False) -> Any:
-    return openpyxl.load_workbook(io.BytesIO(content) if isinstance(content, bytes) else content, data_only=values)
-
-
-def formulas(book: Any) -> list[tuple[str, str]]:
-    return [(s.title, cell.coordinate) for s in book for row in s.iter_rows() for cell in row if cell.data_type == "f"]
-
-
-def row_of(sheet: Any, text: str, column: int = 1) -> int:
-    """The row whose cell in a column says so."""
-    return next(row for row in range(1, sheet.max_row + 1) if sheet.cell(row, column).value == text)
 
 
 # ---------------------------------------------------------------------------------- shape

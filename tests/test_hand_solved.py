@@ -9,7 +9,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from plants import ONE_FEED, bought, limit, margin_is, near, planned, worth_and_rate
+from plants import DEAR_AND_CHEAP, ONE_FEED, bought, limit, margin_is, near, planned, worth_and_rate
 
 
 def test_one_furnace_group_and_one_limit(tmp_path: Path) -> None:
@@ -45,11 +45,7 @@ def test_two_feeds_against_furnace_hours_and_a_splitter(tmp_path: Path) -> None:
     Worths u, v: 50 u + 0.5 v = 120, 40 u + 0.3 v = 90 give u = 1.8 kUSD/h and v = 60 USD/t (1.8 · 1000 + 60 · 9 = 2340)."""
     plan = planned(
         tmp_path,
-        yields="feed, severity, ethylene, rest\ndear, base, 50, 50\ncheap, base, 30, 70",
-        modes="group, feed, severity, charge\nfurnaces, dear, base, 20\nfurnaces, cheap, base, 25",
-        recovery_units="unit, capacity, capacity_unit, measure, min_load\nsplitter, 9, t/h, ethylene, 0",
-        unit_loads="unit, of, item, load, load_unit\nsplitter, cut, ethylene, 1, t/t",
-        prices={"ethylene": 1000, "rest": 300},
+        **DEAR_AND_CHEAP,
         scenario="""
             feeds:
               dear: {spot: {max: unlimited, price: 530 USD/t}}

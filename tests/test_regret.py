@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from plants import ONE_FEED, dumped, near, write
+from plants import ONE_FEED, THREE_STEPS, dumped, near, write
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.comparison import CaseResult, Comparison, compare_cases
@@ -126,26 +126,12 @@ def test_decisions_that_fit_no_other_case(tmp_path: Path) -> None:
     assert all(not row["minimax"] and not row["best_weighted"] for row in answer.table.rows)
 
 
-STEPS = {
-    "yields": "feed, severity, ethylene, water\nethane, base, 50, 50",
-    "modes": "group, feed, severity, charge\nfurnaces, ethane, base, 10",
-    "prices": {"ethylene": 1000},
-    "scenario": """
-        feeds:
-          ethane:
-            pipeline:
-              tiers: [{up_to: 4 kt, price: 300 USD/t}, {up_to: 6 kt, price: 440 USD/t}, {up_to: 10 kt, price: 520 USD/t}]
-        outlets: {water_sale: {max: unlimited, price: 0 USD/t}}
-    """,
-}
-
-
 def test_a_source_is_held_as_a_whole_whatever_its_steps(tmp_path: Path) -> None:
     """A tonne of ethane is worth 500. As written 6 kt are bought: 4 · 200 + 2 · 60 = 920. With a first step of 1 kt and a
     second up to 3 kt: 1 · 200 + 2 · 60 = 320 at 3 kt; 6 kt earn 320 − 3 · 20 = 260, a regret of 60. The other way round 3 kt
     earn 600 of 920: 320."""
     short = {"feeds.ethane.pipeline.tiers.1.up_to": "1 kt", "feeds.ethane.pipeline.tiers.2.up_to": "3 kt"}
-    comparison = small_cases(tmp_path, [{"name": "Long"}, {"name": "Short", "changes": short}], **STEPS)
+    comparison = small_cases(tmp_path, [{"name": "Long"}, {"name": "Short", "changes": short}], **THREE_STEPS)
     assert matrix(regret_table(comparison), ["Long", "Short"]) == [[0.0, near(60)], [near(320), 0.0]]
     plan = comparison.plan("Short")
     held = hold(plan, held_decisions(plan), {key_of(d): 6.0 for d in held_decisions(plan)})
@@ -288,7 +274,7 @@ def test_what_can_be_held(tmp_path: Path) -> None:
 
 def test_what_no_step_has_room_for_cannot_be_held(tmp_path: Path) -> None:
     """Steps of 2, 1 and 1 kt, at least 1 kt of the first: 4 kt have room, 4.5 and 0.5 kt have not."""
-    plan = small_cases(tmp_path, [{"name": "Long"}], **STEPS).plan("Long")
+    plan = small_cases(tmp_path, [{"name": "Long"}], **THREE_STEPS).plan("Long")
     first, *others = held_decisions(plan)[0].columns
     low, high = plan.lp.low.copy(), plan.lp.high.copy()
     low[first], high[first], high[others] = 1.0, 2.0, [1.0, 1.0]

@@ -10,8 +10,8 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-import openpyxl
 import pytest
+from books import book_of, formulas, row_of
 from conftest import Recalculate, needs_office
 from made_sweeps import CONTRACT, ETHYLENE, NAPHTHA, made
 
@@ -102,19 +102,6 @@ def odd(march: Plan, shipped_scenario: Callable[[str], Scenario]) -> dict[str, S
         "six_months": drawn(shipped_scenario("brackwater_2031_03_to_08.yaml"), 12),
         "textbook": drawn(shipped_scenario("thermal_cracker.yaml"), 40),
     }
-
-
-def book_of(content: bytes | Path, values: bool = False) -> Any:
-    return openpyxl.load_workbook(io.BytesIO(content) if isinstance(content, bytes) else content, data_only=values)
-
-
-def formulas(book: Any) -> list[tuple[str, str]]:
-    return [(s.title, cell.coordinate) for s in book for row in s.iter_rows() for cell in row if cell.data_type == "f"]
-
-
-def row_of(sheet: Any, text: str, column: int = 1) -> int:
-    """The first row whose cell in a column says so."""
-    return next(row for row in range(1, sheet.max_row + 1) if sheet.cell(row, column).value == text)
 
 
 def texts(sheet: Any) -> str:

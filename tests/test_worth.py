@@ -12,7 +12,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from plants import ONE_FEED, identity_of_duality, planned
+from plants import DEAR_AND_CHEAP, ONE_FEED, identity_of_duality, planned
 
 from olefinlp.answers.answer import Answer
 from olefinlp.answers.limits import limit_record
@@ -353,11 +353,7 @@ def test_an_account_by_hand(tmp_path: Path) -> None:
     1800 + 540 − 100."""
     plan = planned(
         tmp_path,
-        yields="feed, severity, ethylene, rest\ndear, base, 50, 50\ncheap, base, 30, 70",
-        modes="group, feed, severity, charge\nfurnaces, dear, base, 20\nfurnaces, cheap, base, 25",
-        recovery_units="unit, capacity, capacity_unit, measure, min_load\nsplitter, 9, t/h, ethylene, 0",
-        unit_loads="unit, of, item, load, load_unit\nsplitter, cut, ethylene, 1, t/t",
-        prices={"ethylene": 1000, "rest": 300},
+        **DEAR_AND_CHEAP,
         scenario="""
             feeds:
               dear: {spot: {max: unlimited, price: 530 USD/t}}
